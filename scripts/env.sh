@@ -10,6 +10,8 @@ VENV_PYTHON=$ROOT/.venv/bin/python
 export PYTHONNOUSERSITE=1        # packages in the user's home must not decide a result
 export PYTHONDONTWRITEBYTECODE=1
 unset PYTHONPATH PYTHONHOME
+# A bare system has no locale at all, and file names with accents need one.
+[ -n "${LC_ALL:-}${LC_CTYPE:-}${LANG:-}" ] || export LANG=C.UTF-8
 
 say() { printf '%s\n' "$*"; }
 

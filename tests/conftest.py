@@ -44,7 +44,7 @@ def open_data_is_there():
 
 @pytest.fixture(scope="session")
 def open_data():
-    """Folder of the open data; a test that needs it is skipped, and counted, without."""
+    """Folder of the open data; without it the test is skipped, and counted."""
     if not open_data_is_there():
         pytest.skip(f"open data not found in {open_data_folder()}; set HEAVELINE_DATA")
     return open_data_folder()
