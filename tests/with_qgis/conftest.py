@@ -157,3 +157,37 @@ def fresh_qgis_process(tmp_path):
         return QgisProcess(tmp_path / name, plugins_dir, extra_path)
 
     return make
+
+
+@pytest.fixture(scope="session")
+def artefacts():
+    """Folder, kept after the run, for screenshots that a person looks at."""
+    folder = ROOT / "build" / "artefacts"
+    folder.mkdir(parents=True, exist_ok=True)
+    return folder
+
+
+@pytest.fixture
+def run_desktop():
+    """Run a script inside the real QGIS desktop under a virtual screen.
+
+    ``run_desktop(qgis, script, *args)`` takes a `QgisProcess` with the plugin enabled,
+    whose profile the desktop uses too. The script has to end with ``os._exit(code)``;
+    its code and output are given back.
+    """
+
+    def run(qgis, script, *args, timeout=120):
+        env = {key: qgis.env[key] for key in qgis.env if key != "QT_QPA_PLATFORM"}
+        command = ["xvfb-run", "-a", "-s", "-screen 0 1600x1000x24", "qgis"]
+        command += ["--nologo", "--noversioncheck", "--code", str(script)]
+        command += ["--py-args", *map(str, args), "--"]
+        return subprocess.run(
+            command,
+            env=env,
+            capture_output=True,
+            text=True,
+            timeout=timeout,
+            check=False,
+        )
+
+    return run
