@@ -1,27 +1,30 @@
 """The march: the fault from the rollover, and the rollover from the fault."""
 
 from dataclasses import dataclass, field
-from typing import Optional, Tuple
+from typing import Optional
 
 import numpy as np
 
-from .errors import ConstructionError, Doubt
+from .doubts import march_doubts
+from .errors import ConstructionError
 from .kinematics import from_shear_frame, to_shear_frame
 from .profile import Profile, pool_to_increasing
+from .stepping import march
+from .uncertainty import march_sigma
 
 __all__ = [
     "FaultTrace",
     "MarchOptions",
     "MarchTable",
     "Prediction",
+    "Problem",
+    "Solution",
+    "bed_from",
     "march",
     "predict_fault",
     "predict_horizon",
+    "solve",
 ]
-
-#: Strips beyond which a march without a deep tie should not be trusted
-#: (methods.md section 13, rule 2).
-MANY_STRIPS = 6
 
 
 @dataclass(frozen=True)
@@ -138,7 +141,7 @@ class Prediction:
     table: MarchTable
     detachment_z: Optional[float]
     deepest_z: float
-    doubts: Tuple[Doubt, ...] = field(default=())
+    doubts: tuple = field(default=())
 
     @property
     def strips(self):
@@ -146,141 +149,176 @@ class Prediction:
         return int(self.trace.strip.max())
 
 
-def march(origin_index, origin_fraction, start, increment):
-    """Carry the fault outwards strip by strip.
+@dataclass(frozen=True, eq=False)
+class Problem:
+    """What one section gives a construction.
 
     Parameters
     ----------
-    origin_index : ndarray (n,) of int
-        Node before the place where the column of each node came from.
-    origin_fraction : ndarray (n,)
-        Where between that node and the next, 0 to 1.
-    start : ndarray (m, ...)
-        F at the first m nodes (the known or assumed piece).
-    increment : ndarray (n, ...)
-        B at each node minus R at its origin; the first m rows are not used.
-        Further axes run through together (several beds, or derivatives).
-
-    Returns
-    -------
-    ndarray (n, ...)
-        F[i] = F(origin of i) + increment[i] (eq. 5 of methods.md; 2 and 3 are
-        special cases).
-
-    Notes
-    -----
-    A node can be solved when its origin lies on the solved part, so a whole strip
-    is solved in one step.
+    where : str
+        Section, for messages.
+    separation : Separation
+    fault : KnownFault
+    bed : Profile
+        Hanging-wall horizon; its first point is the hanging-wall cut-off.
+    regional : Regional
+        Written against the footwall cut-off.
+    model : object
+        Kinematic model.
+    options : MarchOptions
     """
-    n = len(origin_index)
-    fault = np.empty((n,) + np.shape(increment)[1:])
-    done = len(start)
-    fault[:done] = start
-    shape = (-1,) + (1,) * (np.ndim(increment) - 1)
-    needed = origin_index + (origin_fraction > 0)
-    while done < n:
-        stop = done + int(np.argmax(np.r_[needed[done:] >= done, True]))
-        if stop == done:
-            raise ConstructionError(
-                "no-progress", "a column has not moved: its origin lies beyond itself."
-            )
-        i, f = origin_index[done:stop], origin_fraction[done:stop].reshape(shape)
-        inner = fault[i] if not f.any() else (1 - f) * fault[i] + f * fault[i + 1]
-        fault[done:stop] = inner + increment[done:stop]
-        done = stop
-    return fault
 
+    where: str
+    separation: object
+    fault: object
+    bed: Profile
+    regional: object
+    model: object
+    options: MarchOptions
 
-def _nodes(u_start, oblique_heave, u_end, samples):
-    """Nodes at the heave over `samples`, from the footwall cut-off to the data's end."""
-    step = oblique_heave / samples
-    count = int(np.floor((u_end - u_start) / step + 1e-6)) + 1
-    return u_start + step * np.arange(max(count, samples + 1))
+    @property
+    def tan(self):
+        """Tangent of the shear angle: u = x - z tan."""
+        return float(np.tan(np.radians(self.model.shear_angle)))
+
+    @property
+    def oblique_heave(self):
+        """Displacement of the columns along the frame's axis at the cut-offs."""
+        separation = self.separation
+        return float(self.model.displacement(separation.heave, separation.throw))
+
+    def regional_at(self, u):
+        """Give R~(u) = (R(0) + s u)/(1 - s tan a) of the straight regional."""
+        line = self.regional
+        at_zero = line.z0 - line.slope * line.x0
+        return (at_zero + line.slope * u) / (1.0 - line.slope * self.tan)
 
 
 @dataclass(frozen=True, eq=False)
-class _Frame:
-    """Everything of one section written against u along the shear lines."""
+class Solution:
+    """One march: everything at its nodes, against u along the shear lines.
 
-    angle: float
-    tan: float
+    Parameters
+    ----------
+    u, z : ndarray (n,)
+        Nodes from the footwall cut-off on, and the fault there.
+    origin_index, origin_fraction : ndarray (n,)
+        Where the column of each node came from, as for `march`.
+    bed_z, regional_z : ndarray (n,)
+        The bed at the node, the regional at its origin.
+    bed : Profile
+        The bed against u, its sigma along the shear lines.
+    start : int
+        Nodes on the known or assumed piece.
+    """
+
+    u: np.ndarray
+    z: np.ndarray
+    origin_index: np.ndarray
+    origin_fraction: np.ndarray
+    bed_z: np.ndarray
+    regional_z: np.ndarray
     bed: Profile
-    bed_slope: np.ndarray  # dz/dx of the bed at its points, for the frame factor
+    start: int
+
+    @property
+    def strip(self):
+        """Number of the strip of each node, 0 on the start piece."""
+        near = self.origin_index + (self.origin_fraction > 0)
+        steps = np.ones(len(self.u))
+        start = np.zeros(self.start)
+        return march(near, np.zeros(len(near)), start, steps).astype(int)
 
 
-def _bed_in_frame(bed, angle, step, where):
+def _bed_in_frame(problem):
     """Write the bed against u; noise that breaks its order is averaged."""
-    tan = np.tan(np.radians(angle))
+    bed, angle, tan = problem.bed, problem.model.shear_angle, problem.tan
     u = to_shear_frame(bed.x, bed.z, angle)
-    pooled_u, z, sigma, x, count = pool_to_increasing(u, bed.z, bed.sigma, bed.x, least=1e-9)
+    u, z, sigma, x, count = pool_to_increasing(u, bed.z, bed.sigma, bed.x, least=1e-9)
     if count.max() > 1:
-        # how far in x the averaging reaches: noise folds little, a steep bed a lot
-        widest = int(np.argmax(count))
-        first = int(count[:widest].sum())
-        width = bed.x[int(first + count[widest]) - 1] - bed.x[first]
-        if width > step:
-            raise ConstructionError(
-                "shear-parallel-to-bed",
-                f"near x = {x[widest]:.0f} the bed dips more steeply than the shear "
-                f"planes of {angle:g} degrees allow.",
-                where,
-                "Use a smaller shear angle, or check the picks there.",
-            )
+        _check_pooling(problem, x, count)
     slope = np.gradient(z, x) if len(x) > 1 else np.zeros(1)
+    # a vertical error of the pick is longer along an inclined shear line
     factor = np.maximum(np.abs(1.0 - slope * tan), 0.2)
-    return _Frame(angle, tan, Profile(pooled_u, z, sigma / factor), slope)
+    return Profile(u, z, sigma / factor)
 
 
-def _check_fault_in_frame(fault, x_low, x_high, angle, where):
+def _check_pooling(problem, x, count):
+    """Refuse a bed whose order breaks over more than noise could."""
+    # how far in x the averaging reaches: noise folds little, a steep bed a lot
+    last = np.cumsum(count).astype(int) - 1
+    first = last - count.astype(int) + 1
+    width = problem.bed.x[last] - problem.bed.x[first]
+    i = int(np.argmax(width))
+    if width[i] > 0.5 * problem.oblique_heave:
+        raise ConstructionError(
+            "shear-parallel-to-bed",
+            f"near x = {x[i]:.0f} the bed dips more steeply than the shear planes of "
+            f"{problem.model.shear_angle:g} degrees allow.",
+            problem.where,
+            "Use a smaller shear angle, or check the picks there.",
+        )
+
+
+def _check_fault_in_frame(problem):
     """Refuse a start piece that is not single-valued along the shear lines."""
-    tan = np.tan(np.radians(angle))
-    x = np.linspace(x_low, x_high, 50)
-    stretch = 1.0 - fault.slope_at(x) * tan
-    if stretch.min() <= 0.05:
+    low, high = problem.separation.footwall.x, problem.separation.hanging_wall.x
+    slope = problem.fault.slope_at(np.linspace(low, high, 50))
+    if (1.0 - slope * problem.tan).min() <= 0.05:
         raise ConstructionError(
             "shear-parallel-to-fault",
-            f"the fault dips {np.degrees(np.arctan(-fault.slope_at(x).min())):.0f} degrees, "
-            f"too near the synthetic shear planes of {angle:g} degrees.",
-            where,
+            f"the fault dips {np.degrees(np.arctan(-slope.min())):.0f} degrees, too "
+            "near the synthetic shear planes of "
+            f"{problem.model.shear_angle:g} degrees.",
+            problem.where,
             "Use a smaller synthetic angle.",
         )
 
 
-def _regional_in_frame(regional, u, tan):
-    """R~(u) = (R(0) + s u)/(1 - s tan a) of a straight regional."""
-    at_zero = regional.z0 - regional.slope * regional.x0
-    return (at_zero + regional.slope * u) / (1.0 - regional.slope * tan)
-
-
-def _solve(separation, fault, bed, regional, model, options, where):
-    """One march: nodes, fault, increments, bed and regional at the nodes."""
-    angle = model.shear_angle
-    tan = np.tan(np.radians(angle))
-    foot, hang = separation.footwall, separation.hanging_wall
-    heave = model.displacement(separation.heave, separation.throw)
-    u_foot = foot.x - foot.z * tan
-    frame = _bed_in_frame(bed, angle, heave / 2.0, where)
-    u = _nodes(u_foot, heave, frame.bed.x[-1], options.samples_per_strip)
-    m = options.samples_per_strip
-    start = _start_piece(fault, foot, hang, u[: m + 1], tan)
-    bed_z = np.interp(u, frame.bed.x, frame.bed.z)
-    regional_z = _regional_in_frame(regional, u - heave, tan)
-    index = np.maximum(np.arange(len(u)) - m, 0)
-    increment = bed_z - regional_z
-    z = march(index, np.zeros(len(u)), start, increment)
-    return u, z, bed_z, regional_z, heave, frame
-
-
-def _start_piece(fault, foot, hang, u, tan):
+def _start_piece(problem, u):
     """F~ on the nodes between the cut-offs, through both of them exactly."""
+    fault = problem.fault
+    foot, hang = problem.separation.footwall, problem.separation.hanging_wall
     inner = fault.x[(fault.x > foot.x) & (fault.x < hang.x)]
     x = np.r_[foot.x, inner, hang.x]
     z = np.r_[foot.z, fault.z_at(inner), hang.z]
-    return np.interp(u, x - z * tan, z)
+    return np.interp(u, x - z * problem.tan, z)
 
 
-def _bed_with_cutoff(bed, cutoff):
-    """The bed from its cut-off on, picks inboard of it left out."""
+def solve(problem):
+    """March one section.
+
+    The nodes stand one oblique heave over `samples_per_strip` apart, exactly, from
+    the footwall cut-off to the last pick.
+
+    Parameters
+    ----------
+    problem : Problem
+
+    Returns
+    -------
+    Solution
+    """
+    foot = problem.separation.footwall
+    bed = _bed_in_frame(problem)
+    m = problem.options.samples_per_strip
+    step = problem.oblique_heave / m
+    u0 = foot.x - foot.z * problem.tan
+    count = int(np.floor((bed.x[-1] - u0) / step + 1e-6)) + 1
+    u = u0 + step * np.arange(max(count, m + 1))
+    origin = problem.model.origin(u, problem.oblique_heave)
+    at = np.maximum((origin - u0) / step, 0.0)
+    index = np.floor(at + 1e-6).astype(int)
+    fraction = np.where(np.abs(at - index) < 1e-6, 0.0, at - index)
+    bed_z = np.interp(u, bed.x, bed.z)
+    regional_z = problem.regional_at(origin)
+    start = _start_piece(problem, u[: m + 1])
+    z = march(index, fraction, start, bed_z - regional_z)
+    return Solution(u, z, index, fraction, bed_z, regional_z, bed, m + 1)
+
+
+def bed_from(cutoff, bed):
+    """Give the bed from its hanging-wall cut-off on, picks inboard left out."""
     beyond = bed.x > cutoff.x + 1e-6
     return Profile(
         np.r_[cutoff.x, bed.x[beyond]],
@@ -325,37 +363,30 @@ def predict_fault(section, separation, fault, bed, regional, model, options=None
     ----------
     Eqs. 2-4 of methods.md (Verrall 1982; White et al. 1986; Groshong 2006).
     """
-    options = options or MarchOptions()
-    where = f"section {section.section_id}"
-    _check_separation(separation, model, where)
-    bed = _bed_with_cutoff(bed, separation.hanging_wall)
-    _check_fault_in_frame(
-        fault, separation.footwall.x, separation.hanging_wall.x, model.shear_angle, where
+    problem = Problem(
+        f"section {section.section_id}",
+        separation,
+        fault,
+        bed_from(separation.hanging_wall, bed),
+        regional,
+        model,
+        options or MarchOptions(),
     )
-    u, z, bed_z, regional_z, heave, frame = _solve(
-        separation, fault, bed, regional, model, options, where
-    )
-    m = options.samples_per_strip
-    if len(u) <= m + 1:
+    _check_separation(problem)
+    _check_fault_in_frame(problem)
+    solution = solve(problem)
+    if len(solution.u) <= solution.start:
         raise ConstructionError(
             "bed-too-short",
             "the hanging-wall horizon ends within one heave of its cut-off, so it "
             "says nothing of the fault at depth.",
-            where,
+            problem.where,
             "Extend the section or the picks into the hanging wall.",
         )
-    x = from_shear_frame(u, z, model.shear_angle)
-    trace_doubts = _check_trace(x, z, where)
-    sigma = _sigma(u, z, m, separation, fault, bed, regional, model, options, frame, where)
-    trace = _trace(x, z, sigma, m, fault, separation, model)
-    table = _table(u, x, z, bed_z, regional_z, m)
-    detachment, reach_doubts = _detachment(u, z, bed_z, regional, heave, frame, m, where)
-    doubts = [
-        *_input_doubts(section, separation, fault, bed, model, heave, where),
-        *trace_doubts,
-        *reach_doubts,
-        *_strip_doubts(trace, bed_z, regional, u, frame, m, where),
-    ]
+    x = from_shear_frame(solution.u, solution.z, model.shear_angle)
+    _check_single_valued(x, problem.where)
+    trace = _trace(problem, solution, x)
+    detachment = _detachment(problem, solution)
     return Prediction(
         section.section_id,
         separation.horizon,
@@ -363,16 +394,17 @@ def predict_fault(section, separation, fault, bed, regional, model, options=None
         "march",
         separation,
         regional,
-        float(heave),
+        problem.oblique_heave,
         trace,
-        table,
+        _table(solution, x),
         detachment,
-        float(z[-1]),
-        tuple(doubts),
+        float(solution.z[-1]),
+        tuple(march_doubts(problem, solution, trace, detachment)),
     )
 
 
-def _check_separation(separation, model, where):
+def _check_separation(problem):
+    separation, where = problem.separation, problem.where
     heave, throw = separation.heave, separation.throw
     if heave <= 0:
         raise ConstructionError(
@@ -389,265 +421,89 @@ def _check_separation(separation, model, where):
             where,
             "Check the hanging-wall side, the sign of the picks and the horizon names.",
         )
-    oblique = model.displacement(heave, throw)
-    if oblique < 0.15 * heave:
+    if problem.oblique_heave < 0.15 * heave:
         raise ConstructionError(
             "shear-parallel-to-fault",
-            f"the oblique heave is {oblique:.1f} at a heave of {heave:.1f}: synthetic "
-            f"shear of {model.shear_angle:g} degrees runs nearly along the fault.",
+            f"the oblique heave is {problem.oblique_heave:.1f} at a heave of "
+            f"{heave:.1f}: synthetic shear of {problem.model.shear_angle:g} degrees "
+            "runs nearly along the fault.",
             where,
             "Use a smaller synthetic angle.",
         )
 
 
-def _check_trace(x, z, where):
-    """Refuse a fault that folds back; doubt one that rises or is very steep."""
-    if np.any(np.diff(x) <= 0):
-        i = int(np.argmax(np.diff(x) <= 0))
+def _check_single_valued(x, where):
+    """Refuse a fault that folds back on itself."""
+    back = np.diff(x) <= 0
+    if back.any():
         raise ConstructionError(
             "fault-not-single-valued",
-            f"near x = {x[i]:.0f} the predicted fault turns back on itself.",
+            f"near x = {x[int(np.argmax(back))]:.0f} the predicted fault turns back on "
+            "itself.",
             where,
             "Check the picks there; noise closer than a strip can do it.",
         )
-    dip = np.degrees(np.arctan2(-np.diff(z), np.diff(x)))
-    doubts = []
-    if dip.min() < -2.0:
-        i = int(np.argmin(dip))
-        doubts.append(
-            Doubt("fault-rises", f"the predicted fault rises outwards near x = {x[i]:.0f}.", where)
-        )
-    if dip.max() > 80.0:
-        i = int(np.argmax(dip))
-        doubts.append(
-            Doubt("fault-steep", f"the predicted fault dips {dip[i]:.0f} degrees near x = {x[i]:.0f}.", where)
-        )
-    return doubts
 
 
-def _trace(x, z, sigma, m, fault, separation, model):
+def _trace(problem, solution, x):
     """Join the known fault above the footwall cut-off to the marched part."""
-    foot = separation.footwall
-    above = fault.x < foot.x - 1e-6
-    full_x, full_z = np.r_[fault.x[above], x], np.r_[fault.z[above], z]
+    fault = problem.fault
+    above = fault.x < problem.separation.footwall.x - 1e-6
     n = int(above.sum())
-    strip = np.r_[np.zeros(n, int), np.ceil(np.arange(len(x)) / m - 1e-9).astype(int) - 1]
-    strip = np.maximum(strip, 0)
+    full_x, full_z = np.r_[fault.x[above], x], np.r_[fault.z[above], solution.z]
+    strip = np.r_[np.zeros(n, int), solution.strip]
     state = np.full(len(full_x), "predicted", dtype=object)
     first = strip == 0
     state[first] = np.where(fault.is_known(full_x[first]), "known", "assumed")
     state[:n] = "known"
-    slope = np.gradient(full_z, full_x)
-    above_sigma = np.full(n, fault.sigma)
     return FaultTrace(
         full_x,
         full_z,
-        np.degrees(np.arctan(-slope)),
+        np.degrees(np.arctan(-np.gradient(full_z, full_x))),
         strip,
         state,
-        np.r_[above_sigma, sigma],
+        np.r_[np.full(n, fault.sigma), march_sigma(problem, solution)],
     )
 
 
-def _table(u, x, z, bed_z, regional_z, m):
-    rows = np.arange(m, len(u), m)
-    rows = np.unique(np.r_[rows, len(u) - 1])
+def _table(solution, x):
+    """One row where each strip ends, and one where the data end."""
+    strip = solution.strip
+    last = np.flatnonzero(np.r_[np.diff(strip) > 0, True])
+    rows = last[strip[last] > 0] if strip[-1] > 0 else last
+    rows = np.union1d([solution.start - 1], rows)
+    increment = solution.bed_z - solution.regional_z
     return MarchTable(
-        np.ceil(rows / m - 1e-9).astype(int) - 1,
+        strip[rows],
         x[rows],
-        u[rows],
-        bed_z[rows],
-        regional_z[rows],
-        (bed_z - regional_z)[rows],
-        z[rows],
+        solution.u[rows],
+        solution.bed_z[rows],
+        solution.regional_z[rows],
+        increment[rows],
+        solution.z[rows],
     )
 
 
-def _hat_matrix(u, points):
-    """Weights of linear interpolation: values at u = matrix @ values at points."""
-    matrix = np.zeros((len(u), len(points)))
-    j = np.clip(np.searchsorted(points, u, side="right") - 1, 0, len(points) - 2)
-    f = np.clip((u - points[j]) / (points[j + 1] - points[j]), 0.0, 1.0)
-    rows = np.arange(len(u))
-    matrix[rows, j] = 1.0 - f
-    matrix[rows, j + 1] += f
-    return matrix
+def _detachment(problem, solution):
+    """Give the detachment level where the bed is back at its far position, or None.
 
-
-def _sigma(u, z, m, separation, fault, bed, regional, model, options, frame, where):
-    """Standard deviation of F at fixed x by linear propagation.
-
-    Pick noise is carried through the march itself (it is linear in the bed); level
-    and dip of the regional, the hanging-wall cut-off and the shear angle through
-    differences of whole marches; the error of the known piece is copied into every
-    strip (methods.md section 13).
+    Over one strip the bed has to lie within 2 sigma of the regional moved out by
+    the heave, R~(u - H): over a level detachment it comes back there, not to the
+    regional itself (methods.md section 1).
     """
-    weights = _hat_matrix(u, frame.bed.x)
-    weights[: m + 1] = 0.0
-    weights[:, 0] = 0.0  # the bed's first point is the cut-off, varied below
-    index = np.maximum(np.arange(len(u)) - m, 0)
-    rows = march(index, np.zeros(len(u)), np.zeros((m + 1, weights.shape[1])), weights)
-    slope = np.gradient(z, from_shear_frame(u, z, model.shear_angle))
-    to_vertical = 1.0 - slope * frame.tan
-    variance = (rows**2 @ frame.bed.sigma**2) * to_vertical**2
-    variance += fault.sigma**2
-    x = from_shear_frame(u, z, model.shear_angle)
-    columns, covariance = _parameter_columns(
-        x, z, separation, fault, bed, regional, model, options, where
-    )
-    variance += np.einsum("ni,ij,nj->n", columns, covariance, columns)
-    return np.sqrt(np.maximum(variance, 0.0))
+    last = slice(len(solution.u) - solution.start, None)
+    u, origin = solution.u[last], solution.regional_z[last]
+    sigma = np.interp(u, solution.bed.x, solution.bed.sigma)
+    from_regional = problem.regional.sigma_at(u - problem.oblique_heave)
+    spread = np.maximum(np.hypot(sigma, from_regional), 1e-6)
+    if np.all(np.abs(solution.bed_z[last] - origin) <= 2.0 * spread):
+        return float(solution.z[last].mean())
+    return None
 
 
-def _parameter_columns(x, z, separation, fault, bed, regional, model, options, where):
-    """Change of F at fixed x with regional level, dip, cut-off and shear angle."""
-    step_z = max(1e-3 * separation.throw, 1e-6)
-    step_slope = 1e-4
-    trials = (
-        (step_z, 0.0, 0.0, 0.0),
-        (0.0, step_slope, 0.0, 0.0),
-        (0.0, 0.0, step_z, 0.0),
-        (0.0, 0.0, 0.0, 0.05),
-    )
-    columns = np.zeros((len(x), 4))
-    for i, trial in enumerate(trials):
-        if i == 3 and options.shear_angle_sigma == 0:
-            continue
-        px, pz = _perturbed(trial, separation, fault, bed, regional, model, options, where)
-        columns[:, i] = (np.interp(x, px, pz) - z) / (step_z, step_slope, step_z, 0.05)[i]
-    covariance = np.zeros((4, 4))
-    a, b, c = regional.covariance
-    covariance[:2, :2] = [[a, b], [b, c]]
-    covariance[2, 2] = separation.hanging_wall.sigma_z ** 2
-    covariance[3, 3] = options.shear_angle_sigma**2
-    return columns, covariance
-
-
-def _perturbed(trial, separation, fault, bed, regional, model, options, where):
-    """March again with one parameter moved; cut-offs slide along the fault."""
-    from dataclasses import replace
-
-    dz, dslope, dhang, dangle = trial
-    foot, hang = separation.footwall, separation.hanging_wall
-    # a regional raised by dz meets the fault at another place
-    fault_slope = float(fault.slope_at(foot.x))
-    dx = dz / (fault_slope - regional.slope)
-    foot = replace(foot, x=foot.x + dx, z=foot.z + fault_slope * dx)
-    slope = float(fault.slope_at(hang.x))
-    hang = replace(hang, x=hang.x + dhang / slope, z=hang.z + dhang)
-    moved = replace(separation, footwall=foot, hanging_wall=hang)
-    line = regional.shifted(dz, dslope).moved_to(foot.x)
-    if dangle:
-        model = replace(model, shear_angle=model.shear_angle + dangle)
-    bed = Profile(np.r_[hang.x, bed.x[1:]], np.r_[hang.z, bed.z[1:]], bed.sigma)
-    u, z, *_ = _solve(moved, fault, bed, line, model, options, where)
-    return from_shear_frame(u, z, model.shear_angle), z
-
-
-def _detachment(u, z, bed_z, regional, heave, frame, m, where):
-    """Detachment level where the bed is back at its far position over one strip."""
-    far = _regional_in_frame(regional, u - heave, frame.tan)
-    last = slice(len(u) - m - 1, None)
-    sigma = np.interp(u[last], frame.bed.x, frame.bed.sigma)
-    spread = np.sqrt(sigma**2 + regional.sigma_at(u[last] - heave) ** 2)
-    miss = np.abs(bed_z[last] - far[last])
-    if np.all(miss <= 2.0 * np.maximum(spread, 1e-6)):
-        return float(z[last].mean()), []
-    return None, [
-        Doubt(
-            "regional-not-reached",
-            "the bed is not back at its far position where the picks end; the fault "
-            f"goes down to {z[-1]:.0f} at least, its detachment is not reached.",
-            where,
-        )
-    ]
-
-
-def _input_doubts(section, separation, fault, bed, model, heave, where):
-    """What is doubtful about the inputs of a march that runs."""
-    doubts = []
-    hang = separation.hanging_wall
-    say = lambda code, text: doubts.append(Doubt(code, text, where))  # noqa: E731
-    if not bool(fault.is_known(hang.x)):
-        say(
-            "assumed-piece",
-            "the fault between its last known point and the hanging-wall cut-off is "
-            f"assumed: straight, by {fault.below_from}.",
-        )
-    gap = bed.x[1] - hang.x if len(bed) > 1 else 0.0
-    if gap > 0.5 * separation.heave:
-        say(
-            "horizon-ends-before-fault",
-            f"the hanging-wall horizon ends {gap:.0f} before its cut-off and was "
-            "extended over that distance.",
-        )
-    spacing = np.diff(bed.x)
-    if len(spacing) > 1 and separation.heave < 2.0 * np.median(spacing[1:]):
-        say(
-            "small-heave",
-            f"the heave of {separation.heave:.0f} is small against the pick spacing "
-            f"of {np.median(spacing[1:]):.0f}.",
-        )
-    if len(spacing) > 1 and spacing[1:].max() > heave:
-        i = 1 + int(np.argmax(spacing[1:]))
-        say(
-            "gap-in-bed",
-            f"no picks for {spacing[i]:.0f} beyond x = {bed.x[i]:.0f}, more than a strip; "
-            "the bed is straight there by assumption.",
-        )
-    if section.obliquity > 20.0:
-        say(
-            "oblique-section",
-            f"the section is up to {section.obliquity:.0f} degrees off transport.",
-        )
-    margin = _shear_margin(separation, bed, model)
-    if margin < 10.0:
-        say(
-            "shear-near-parallel",
-            f"the shear planes are within {max(margin, 0):.0f} degrees of the fault or the bed.",
-        )
-    return doubts
-
-
-def _shear_margin(separation, bed, model):
-    """Smallest angle between the shear planes and the cut-off dip or the bed."""
-    a = model.shear_angle
-    if a == 0 or len(bed) < 3:
-        return 90.0
-    dip = np.degrees(np.arctan(np.diff(bed.z) / np.diff(bed.x)))
-    if a > 0:
-        return float(90.0 - a - np.percentile(dip, 95))
-    return float(min(90.0 + a - separation.cutoff_dip, 90.0 + a + np.percentile(dip, 5)))
-
-
-def _strip_doubts(trace, bed_z, regional, u, frame, m, where):
-    doubts = []
-    strips = int(trace.strip.max())
-    if strips > MANY_STRIPS:
-        doubts.append(
-            Doubt(
-                "many-strips",
-                f"{strips} strips below the cut-off without a deep tie; errors grow "
-                "with every strip.",
-                where,
-            )
-        )
-    level = _regional_in_frame(regional, u, frame.tan)
-    sigma = np.interp(u, frame.bed.x, frame.bed.sigma)
-    above = bed_z[m:] - level[m:] > 3.0 * sigma[m:] + 1e-3 * np.ptp(level - bed_z)
-    if above.any():
-        at = from_shear_frame(u[m:][above][0], bed_z[m:][above][0], frame.angle)
-        doubts.append(
-            Doubt(
-                "bed-above-regional",
-                f"the bed lies above the regional from x = {at:.0f} on some of the way.",
-                where,
-            )
-        )
-    return doubts
-
-
-def predict_horizon(trace_x, trace_z, regional, oblique_heave, shear_angle, samples=400):
+def predict_horizon(
+    trace_x, trace_z, regional, oblique_heave, shear_angle, samples=400
+):
     """Predict a horizon in the hanging wall from the fault.
 
     Parameters
@@ -688,7 +544,12 @@ def predict_horizon(trace_x, trace_z, regional, oblique_heave, shear_angle, samp
             "the fault is not single-valued along these shear planes.",
             remedy="Use a smaller synthetic angle.",
         )
-    gap = np.asarray(trace_z) - _regional_in_frame(regional, fu, tan)
+
+    def level(u):
+        at_zero = regional.z0 - regional.slope * regional.x0
+        return (at_zero + regional.slope * u) / (1.0 - regional.slope * tan)
+
+    gap = np.asarray(trace_z) - level(fu)
     hit = np.flatnonzero((gap[:-1] >= 0) & (gap[1:] < 0))
     if not len(hit):
         raise ConstructionError(
@@ -704,10 +565,10 @@ def predict_horizon(trace_x, trace_z, regional, oblique_heave, shear_angle, samp
         )
     own = fu[(fu > u_hang) & (fu < fu[-1])]
     u = np.unique(np.r_[np.linspace(u_hang, fu[-1], samples), own])
-    fault = lambda at: np.interp(at, fu, trace_z)  # noqa: E731
-    z = _regional_in_frame(regional, u - oblique_heave, tan) + fault(u) - fault(u - oblique_heave)
+    outer, inner = np.interp(u, fu, trace_z), np.interp(u - oblique_heave, fu, trace_z)
+    z = level(u - oblique_heave) + outer - inner
     x = from_shear_frame(u, z, shear_angle)
-    foot_z = float(fault(u_foot))
+    foot_z = float(np.interp(u_foot, fu, trace_z))
     return (
         Profile(x, z, np.zeros(len(x))),
         (float(u_foot + foot_z * tan), foot_z),

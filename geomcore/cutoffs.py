@@ -1,22 +1,14 @@
 """Cut-offs of a horizon, given or found, its regional, heave and throw."""
 
 from dataclasses import dataclass, replace
-from typing import Optional, Tuple
+from typing import Optional
 
 import numpy as np
 
 from .errors import ConstructionError, Doubt, PicksError
-from .profile import (
-    CutOff,
-    KnownFault,
-    Separation,
-    extend_to_fault,
-    fit_line,
-    known_fault,
-    level_separation,
-    line_through,
-    profile_from_picks,
-)
+from .fault import KnownFault, known_fault
+from .profile import fit_line, profile_from_picks
+from .separation import CutOff, Separation, extend_to_fault, level_separation
 
 __all__ = [
     "CutoffOptions",
@@ -44,7 +36,7 @@ class GivenCutoffs:
 
     footwall: Optional[CutOff]
     hanging_wall: Optional[CutOff]
-    doubts: Tuple[Doubt, ...] = ()
+    doubts: tuple = ()
 
     @property
     def cutoffs(self):
@@ -68,7 +60,7 @@ class SeparationResult:
 
     separation: Separation
     level_difference: Optional[float]
-    doubts: Tuple[Doubt, ...] = ()
+    doubts: tuple = ()
 
 
 @dataclass(frozen=True)
@@ -78,7 +70,7 @@ class RegionalResult:
     regional: object
     separation: Separation
     result: SeparationResult
-    doubts: Tuple[Doubt, ...]
+    doubts: tuple
 
 
 def wall_guide(picks, other=None):
@@ -99,7 +91,11 @@ def wall_guide(picks, other=None):
         for kind in ("fault", "cutoff"):
             marks = table.of(kind)
             if len(marks):
-                z = float(np.median(picks.z[np.isfinite(picks.z)])) if len(picks) else 0.0
+                z = (
+                    float(np.median(picks.z[np.isfinite(picks.z)]))
+                    if len(picks)
+                    else 0.0
+                )
                 return _upright(float(0.5 * (marks.x.min() + marks.x.max())), z)
     return None
 
@@ -162,18 +158,31 @@ def given_cutoffs(picks, horizon, options):
             "Filter the cut-off layer to this fault, or shorten the section.",
         )
     if len(free) == 1:
-        wall = open_walls[0] if len(open_walls) == 1 else _nearer_block(picks, horizon, free, options, where)
+        wall = (
+            open_walls[0]
+            if len(open_walls) == 1
+            else _nearer_block(picks, horizon, free, options, where)
+        )
         found[wall] = _as_cutoff(free, 0, wall)
         return GivenCutoffs(found.get("footwall"), found.get("hanging wall"))
     crossed, doubts = _is_crossed(picks, horizon, free, options, where)
     first, second = (1, 0) if crossed else (0, 1)
     return GivenCutoffs(
-        _as_cutoff(free, first, "footwall"), _as_cutoff(free, second, "hanging wall"), doubts
+        _as_cutoff(free, first, "footwall"),
+        _as_cutoff(free, second, "hanging wall"),
+        doubts,
     )
 
 
 def _as_cutoff(picks, i, wall):
-    return CutOff(wall, float(picks.x[i]), float(picks.z[i]), 0.0, float(picks.sigma_z[i]), "given")
+    return CutOff(
+        wall,
+        float(picks.x[i]),
+        float(picks.z[i]),
+        0.0,
+        float(picks.sigma_z[i]),
+        "given",
+    )
 
 
 def _nearer_block(picks, horizon, free, options, where):
@@ -209,7 +218,8 @@ def _is_crossed(picks, horizon, free, options, where):
 
 def _walls(picks, horizon):
     return tuple(
-        profile_from_picks(picks.of("horizon", horizon, w)) for w in ("footwall", "hanging wall")
+        profile_from_picks(picks.of("horizon", horizon, w))
+        for w in ("footwall", "hanging wall")
     )
 
 
@@ -242,7 +252,9 @@ def measure_separation(picks, fault, horizon, options):
     foot = foot or _found_cutoff(footwall, fault, "footwall", where)
     hang = hang or _found_cutoff(hanging, fault, "hanging wall", where)
     separation = Separation(horizon, foot, hang, picks.domain)
-    return _with_level(separation, footwall, hanging, options, given.doubts if given else ())
+    return _with_level(
+        separation, footwall, hanging, options, given.doubts if given else ()
+    )
 
 
 def _with_level(separation, footwall, hanging, options, doubts):
@@ -319,10 +331,19 @@ def regional_and_separation(picks, fault, horizon, model, spec, given, options):
     far = _far_picks(hanging, fault, spec)
     moved_by, regional = 0.0, None
     for _ in range(4 if far is not None else 1):
-        regional, foot = _regional(footwall, far, moved_by, fault, foot if given and given.footwall else None, spec, where, doubts)
+        regional, foot = _regional(
+            footwall,
+            far,
+            moved_by,
+            fault,
+            foot if given and given.footwall else None,
+            spec,
+            where,
+            doubts,
+        )
         separation = Separation(horizon, foot, hang)
         moved_by = model.displacement(separation.heave, separation.throw)
-    doubts += _level_doubts(regional, footwall, spec, where)
+    doubts += _level_doubts(regional, footwall, where)
     result = _with_level(separation, footwall, hanging, options, tuple(doubts))
     return RegionalResult(regional, separation, result, tuple(_unique(doubts)))
 
@@ -345,13 +366,28 @@ def _regional(footwall, far, moved_by, fault, foot, spec, where, doubts):
         near = x > fault.x[0] - spec.footwall_within
         x, z, sigma = x[near], z[near], sigma[near]
     if far is not None and moved_by > 0:
-        x, z, sigma = np.r_[x, far[0] - moved_by], np.r_[z, far[1]], np.r_[sigma, far[2]]
+        x, z, sigma = (
+            np.r_[x, far[0] - moved_by],
+            np.r_[z, far[1]],
+            np.r_[sigma, far[2]],
+        )
     slope = None if spec.dip is None else -np.tan(np.radians(spec.dip))
     if spec.z is not None and foot is None:
-        foot = CutOff("footwall", float(fault.x_at(spec.z)), float(spec.z), how="the given regional meets the fault")
+        foot = CutOff(
+            "footwall",
+            float(fault.x_at(spec.z)),
+            float(spec.z),
+            how="the given regional meets the fault",
+        )
     through = (foot.x, foot.z) if foot else None
     if through and slope is None and len(x) < 1:
-        doubts.append(Doubt("regional-level", "no footwall picks: the regional is taken as level.", where))
+        doubts.append(
+            Doubt(
+                "regional-level",
+                "no footwall picks: the regional is taken as level.",
+                where,
+            )
+        )
         slope = 0.0
     try:
         regional = fit_line(x, z, sigma, slope=slope, through=through)
@@ -373,11 +409,13 @@ def _regional(footwall, far, moved_by, fault, foot, spec, where, doubts):
     slope_f = float(fault.slope_at(at))
     s = np.hypot(float(regional.sigma_at(at)), fault.sigma)
     across = max(abs(slope_f - regional.slope), 1e-9)
-    foot = CutOff("footwall", at, regional.z0, s / across, s * abs(slope_f) / across, regional.how)
+    foot = CutOff(
+        "footwall", at, regional.z0, s / across, s * abs(slope_f) / across, regional.how
+    )
     return regional, foot
 
 
-def _level_doubts(regional, footwall, spec, where):
+def _level_doubts(regional, footwall, where):
     """Doubt a footwall horizon that is not straight within its stated sigma."""
     if not regional.n_picks or len(footwall) < 5:
         return []
@@ -388,12 +426,8 @@ def _level_doubts(regional, footwall, spec, where):
     return [
         Doubt(
             "regional-misfit",
-            f"the footwall picks miss the straight regional by {rms:.1f} times their sigma.",
+            f"the footwall picks miss the straight regional by {rms:.1f} times their "
+            "sigma.",
             where,
         )
     ]
-
-
-def straight_regional(x0, z0, dip):
-    """Make a given regional from a point and its dip in degrees."""
-    return line_through(x0, z0, -np.tan(np.radians(dip)))

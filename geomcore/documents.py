@@ -28,7 +28,9 @@ def read_object(cls, document, where, **given):
         missing.
     """
     if not isinstance(document, dict):
-        raise StudyError("bad-study", "an object with named entries is expected.", where)
+        raise StudyError(
+            "bad-study", "an object with named entries is expected.", where
+        )
     known = {f.name: f for f in fields(cls)}
     unknown = sorted(set(document) - set(known))
     if unknown:
@@ -48,7 +50,10 @@ def read_object(cls, document, where, **given):
     ]
     if missing:
         raise StudyError(
-            "bad-study", f"not given: {', '.join(missing)}.", where, "Nothing is guessed."
+            "bad-study",
+            f"not given: {', '.join(missing)}.",
+            where,
+            "Nothing is guessed.",
         )
     for name, value in values.items():
         _check_type(known[name], value, where)
@@ -59,7 +64,7 @@ def _check_type(field, value, where):
     """Refuse a text where a number belongs, and the like."""
     if value is None:
         return
-    if field.type in (float, "float", "Optional[float]") or "float]" == str(field.type):
+    if field.type in (float, "float", "Optional[float]") or str(field.type) == "float]":
         wrong = isinstance(value, bool) or not isinstance(value, (int, float))
         if wrong or value != value:
             raise StudyError(

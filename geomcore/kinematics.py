@@ -7,7 +7,13 @@ import numpy as np
 
 from .errors import ConstructionError
 
-__all__ = ["MODELS", "ConstantHeave", "from_shear_frame", "model_named", "to_shear_frame"]
+__all__ = [
+    "MODELS",
+    "ConstantHeave",
+    "from_shear_frame",
+    "model_named",
+    "to_shear_frame",
+]
 
 
 def to_shear_frame(x, z, shear_angle):
@@ -98,7 +104,7 @@ def model_named(name, **parameters):
         If there is no such model.
     """
     for model in MODELS:
-        if model.NAME == name:
+        if name == model.NAME:
             return model(**parameters)
     raise ConstructionError(
         "unknown-model",

@@ -1,13 +1,13 @@
 """Picks on a section: crossings, corridor projection and surfaces sampled."""
 
+from collections.abc import Mapping
 from dataclasses import dataclass, field, replace
-from typing import Callable, Mapping, Optional
+from typing import Callable, Optional
 
 import numpy as np
 
 from .errors import PicksError
-from .section import unit_vector
-from .sources import Features, Grid, conversion_text, to_vertical
+from .sources import Grid, conversion_text, to_vertical
 
 __all__ = [
     "KINDS",
@@ -16,8 +16,8 @@ __all__ = [
     "PullOptions",
     "SourceCount",
     "apparent_dip",
-    "pull_source",
     "prepare_source",
+    "pull_source",
 ]
 
 #: What a pick can be (design, fixed output values).
@@ -130,7 +130,9 @@ class Picks:
     @classmethod
     def empty(cls, section_id, domain="depth"):
         """Make a table without picks."""
-        return cls(section_id, domain, **{k: np.empty(0, d) for k, d in _COLUMNS.items()})
+        return cls(
+            section_id, domain, **{k: np.empty(0, d) for k, d in _COLUMNS.items()}
+        )
 
     @classmethod
     def build(cls, section_id, x, z, domain="depth", **columns):
@@ -171,7 +173,8 @@ class Picks:
                 f"section {self.section_id}",
             )
         return replace(
-            self, **{k: np.concatenate([getattr(t, k) for t in tables]) for k in _COLUMNS}
+            self,
+            **{k: np.concatenate([getattr(t, k) for t in tables]) for k in _COLUMNS},
         )
 
     def left_out(self, mask, reason):
@@ -303,7 +306,13 @@ def prepare_source(declaration, data, length_unit):
     text = conversion_text(declaration, length_unit)
     if isinstance(data, Grid):
         return PreparedSource(
-            declaration, data, np.empty(0), {}, (np.nan, np.nan), length_unit, conversion=text
+            declaration,
+            data,
+            np.empty(0),
+            {},
+            (np.nan, np.nan),
+            length_unit,
+            conversion=text,
         )
     converted = to_vertical(declaration, data.value, length_unit)
     refused = dict(data.refused)
@@ -317,7 +326,9 @@ def prepare_source(declaration, data, length_unit):
         _range(np.where(converted.reason == "", data.value, np.nan)),
         length_unit,
         runs=_runs(data) if data.geometry != "point" else None,
-        order=np.argsort(data.xy[:, 1], kind="stable") if data.geometry == "point" else None,
+        order=np.argsort(data.xy[:, 1], kind="stable")
+        if data.geometry == "point"
+        else None,
         conversion=text,
     )
 
@@ -411,8 +422,10 @@ def line_crossings(prepared, frame):
         pieces.append((segment[inside], f[inside], along[inside] + frame._distance[i]))
     segment, f, distance = (np.concatenate(v) for v in zip(*pieces))
     start = runs.start[segment]
-    at = lambda v: v[start] + f.reshape((-1,) + (1,) * (v.ndim - 1)) * (v[start + 1] - v[start])  # noqa: E731
-    return distance, at(prepared.value), runs.part[segment], at(xy)
+    value = prepared.value
+    value = value[start] + f * (value[start + 1] - value[start])
+    at = xy[start] + f[:, None] * (xy[start + 1] - xy[start])
+    return distance, value, runs.part[segment], at
 
 
 def points_in_corridor(prepared, frame, corridor):
@@ -433,9 +446,7 @@ def points_in_corridor(prepared, frame, corridor):
         i0, i1 = np.searchsorted(sorted_y, [low[1] - reach[1], high[1] + reach[1]])
         candidate = order[i0:i1]
         px = xy[candidate, 0]
-        found.append(
-            candidate[(px >= low[0] - reach[0]) & (px <= high[0] + reach[0])]
-        )
+        found.append(candidate[(px >= low[0] - reach[0]) & (px <= high[0] + reach[0])])
     index = np.unique(np.concatenate(found))
     x, off = frame.project(xy[index])
     near = np.abs(off) <= corridor  # NaN where the section has no such x

@@ -25,7 +25,24 @@ OBLIQUITY_LIMIT = 60.0
 _COMPASS = {
     name: i * 22.5
     for i, name in enumerate(
-        "N NNE NE ENE E ESE SE SSE S SSW SW WSW W WNW NW NNW".split()
+        [
+            "N",
+            "NNE",
+            "NE",
+            "ENE",
+            "E",
+            "ESE",
+            "SE",
+            "SSE",
+            "S",
+            "SSW",
+            "SW",
+            "WSW",
+            "W",
+            "WNW",
+            "NW",
+            "NNW",
+        ]
     )
 }
 
@@ -117,12 +134,16 @@ class SectionFrame:
         vertices = vertices[keep]
         if len(vertices) < 2:
             self._refuse("bad-line", "the line has no length.", "Draw it anew.")
-        object.__setattr__(self, "transport_azimuth", float(self.transport_azimuth) % 360)
+        object.__setattr__(
+            self, "transport_azimuth", float(self.transport_azimuth) % 360
+        )
         legs = np.diff(vertices, axis=0)
         lengths = np.hypot(legs[:, 0], legs[:, 1])
         along = legs @ unit_vector(self.transport_azimuth)
         forward = along.sum() >= 0
-        angles = np.degrees(np.arccos(np.clip((along if forward else -along) / lengths, -1, 1)))
+        angles = np.degrees(
+            np.arccos(np.clip((along if forward else -along) / lengths, -1, 1))
+        )
         self._check_legs(angles)
         x = np.r_[0.0, np.cumsum(along)]
         for name, value in (
@@ -146,7 +167,7 @@ class SectionFrame:
                 "leg-runs-back",
                 f"leg {worst + 1} runs back along the transport azimuth "
                 f"{self.transport_azimuth:.1f}.",
-                "Draw the section so that every leg goes the same way across the fault.",
+                "Draw the section so that every leg crosses the fault the same way.",
             )
         if angles[worst] > OBLIQUITY_LIMIT:
             self._refuse(
@@ -170,7 +191,7 @@ class SectionFrame:
 
     @property
     def x_max(self):
-        """x at the hanging-wall end of the line."""
+        """X at the hanging-wall end of the line."""
         return float(self._x.max())
 
     @property
@@ -265,8 +286,13 @@ def mean_strike(parts):
     >>> mean_strike([[(0, 0), (1, 1000), (0, 2000)]])
     0.0
     """
-    chords = [np.asarray(p, dtype=float)[-1, :2] - np.asarray(p, dtype=float)[0, :2] for p in parts]
-    double = sum((complex(c[1], c[0]) ** 2 / max(abs(complex(*c)), 1e-300) for c in chords), 0j)
+    chords = [
+        np.asarray(p, dtype=float)[-1, :2] - np.asarray(p, dtype=float)[0, :2]
+        for p in parts
+    ]
+    double = sum(
+        (complex(c[1], c[0]) ** 2 / max(abs(complex(*c)), 1e-300) for c in chords), 0j
+    )
     if abs(double) == 0:
         raise FrameError("no-strike", "the fault trace has no length.", "fault trace")
     return float(np.degrees(np.angle(double)) / 2.0 % 180.0)

@@ -1,7 +1,8 @@
-"""What one layer is declared to be, the arrays read from it, and the way to elevation."""
+"""What one layer is declared to be, its arrays, and the way to elevation."""
 
+from collections.abc import Mapping
 from dataclasses import dataclass, field
-from typing import Any, Callable, Mapping, Optional, Tuple
+from typing import Any, Callable, Optional
 
 import numpy as np
 
@@ -136,7 +137,7 @@ class SourceDeclaration:
     azimuth_north: str = "grid"
     declination: float = 0.0
     corridor: Optional[float] = None
-    null_values: Tuple[float, ...] = NULL_CODES
+    null_values: tuple = NULL_CODES
 
     def __post_init__(self):
         self._one_of("role", ROLES)
@@ -275,7 +276,9 @@ class Features:
         offsets = np.concatenate([[0], np.cumsum([len(p) for p in parts])]).astype(int)
         stacked = np.vstack(parts) if parts else np.empty((0, 3))
         if values is None:
-            value = stacked[:, 2] if stacked.shape[1] > 2 else np.full(len(stacked), np.nan)
+            value = (
+                stacked[:, 2] if stacked.shape[1] > 2 else np.full(len(stacked), np.nan)
+            )
         else:
             value = np.repeat(np.asarray(values, dtype=float), np.diff(offsets))
         k = len(parts)

@@ -4,14 +4,11 @@ The way of the data from top to bottom is `run`: section frames, picks,
 construction. Each stage can be called alone; the Processing algorithms do.
 """
 
-import hashlib
-import json
-from dataclasses import dataclass, field, replace
-from typing import Optional, Tuple
+from dataclasses import dataclass, replace
+from typing import Optional
 
 import numpy as np
 
-from . import __version__
 from .construction import MarchOptions, predict_fault, predict_horizon
 from .cutoffs import (
     CutoffOptions,
@@ -20,37 +17,32 @@ from .cutoffs import (
     regional_and_separation,
     wall_guide,
 )
-from .documents import read_object, write_object
+from .digest import digest
 from .errors import Doubt, FrameError, GeomcoreError, StudyError, Unsolved
-from .kinematics import MODELS, model_named
+from .fault import known_fault
+from .kinematics import model_named
 from .picks import Picks, PullOptions, SourceCount, prepare_source, pull_source
 from .profile import (
     Profile,
     fit_line,
-    known_fault,
     line_through,
     profile_from_picks,
     require_depth,
 )
-from .section import (
-    OBLIQUITY_WARNING,
-    SectionFrame,
-    mean_strike,
-    parallel_sections,
-    parse_azimuth,
-    transport_azimuth,
-)
-from .sources import Features, Grid, SourceDeclaration
-from .units import LENGTH_UNITS
+from .recipe import FORMAT, HorizonSpec, Study
+from .section import OBLIQUITY_WARNING, SectionFrame, parallel_sections
+from .sources import Features, Grid, vertical_factor
+from .transport import resolve_transport, trace_parts
 from .walls import assign_walls, leave_out_near_fault
 
 __all__ = [
     "FORMAT",
     "GivenTrace",
+    "HorizonSpec",
     "SectionLine",
     "SectionPicks",
-    "SectionSet",
     "SectionResult",
+    "SectionSet",
     "Study",
     "StudyRun",
     "construct",
@@ -61,316 +53,6 @@ __all__ = [
     "run_from_picks",
     "section_frames",
 ]
-
-FORMAT = "heaveline-study"
-VERSION = 1
-
-
-@dataclass(frozen=True)
-class ParallelSpec:
-    """Parallel sections to be laid across the fault trace (see `parallel_sections`)."""
-
-    spacing: Optional[float] = None
-    count: Optional[int] = None
-    footwall_length: float = 2000.0
-    hanging_wall_length: float = 8000.0
-    extent: Optional[tuple] = None
-
-
-@dataclass(frozen=True)
-class SectionsSpec:
-    """Where the section lines come from: a layer, or laid parallel.
-
-    Parameters
-    ----------
-    uri : str
-        Line layer of hand-drawn or earlier sections.
-    id_field : str
-        Attribute that names them; the feature id if empty.
-    parallel : ParallelSpec, optional
-        Lay them across the fault trace instead.
-    """
-
-    uri: str = ""
-    id_field: str = ""
-    parallel: Optional[ParallelSpec] = None
-
-
-@dataclass(frozen=True)
-class TransportSpec:
-    """Transport azimuth: given, or normal to the mean fault strike.
-
-    Parameters
-    ----------
-    azimuth : float, optional
-        Grid azimuth towards the hanging wall, degrees.
-    hw_side : str
-        Compass point or azimuth that points into the hanging wall.
-    """
-
-    azimuth: Optional[float] = None
-    hw_side: str = ""
-
-
-@dataclass(frozen=True)
-class PicksSpec:
-    """How picks are brought in (see `PullOptions`), and fit distances.
-
-    Parameters
-    ----------
-    corridor, fault_buffer, grid_step
-        As in `PullOptions`.
-    separation_from, separation_to : float
-        The vertical separation of a horizon is measured by straight lines fitted
-        between these distances outside its cut-offs.
-    tracked : tuple of str
-        Keys of point sources that were tracked or gridded, so that values drawn
-        across the fault gap are looked for as in grids.
-    """
-
-    corridor: float = 500.0
-    fault_buffer: float = 50.0
-    grid_step: Optional[float] = None
-    separation_from: float = 50.0
-    separation_to: float = 500.0
-    tracked: Tuple[str, ...] = ()
-
-
-@dataclass(frozen=True)
-class RegionalSpec:
-    """Regional of the horizon: given, or fitted.
-
-    Parameters
-    ----------
-    z : float, optional
-        Its elevation at the footwall cut-off.
-    dip : float, optional
-        Its dip in degrees, positive down towards the hanging wall.
-    footwall_within : float, optional
-        Only footwall picks within this distance of the fault are fitted.
-    far_from : float, optional
-        Hanging-wall picks farther than this beyond the fault are judged to be back
-        at regional; they are moved back by the oblique heave and fitted too.
-    """
-
-    z: Optional[float] = None
-    dip: Optional[float] = None
-    footwall_within: Optional[float] = None
-    far_from: Optional[float] = None
-
-
-@dataclass(frozen=True)
-class HorizonSpec:
-    """A further horizon to be predicted from the fault.
-
-    Parameters
-    ----------
-    name : str
-    offset : float, optional
-        Elevation of its regional above that of the construction's horizon
-        (negative below); its own footwall picks are used if not given.
-    """
-
-    name: str
-    offset: Optional[float] = None
-
-
-@dataclass(frozen=True)
-class ConstructionSpec:
-    """What is constructed and how.
-
-    Parameters
-    ----------
-    horizon : str
-        Horizon whose rollover makes the fault.
-    model : str
-        Name of a kinematic model.
-    shear_angle : float
-        Degrees from the vertical, positive antithetic.
-    shear_angle_sigma : float
-        One standard deviation of it, for the stated sigma.
-    solver : str
-        ``march``.
-    samples_per_strip : int
-    regional : RegionalSpec
-    further_horizons : tuple of HorizonSpec
-    """
-
-    horizon: str
-    model: str = MODELS[0].NAME
-    shear_angle: float = 0.0
-    shear_angle_sigma: float = 0.0
-    solver: str = "march"
-    samples_per_strip: int = 40
-    regional: RegionalSpec = field(default_factory=RegionalSpec)
-    further_horizons: Tuple[HorizonSpec, ...] = ()
-
-
-@dataclass(frozen=True)
-class OutputsSpec:
-    """What the study writes, relative to the study file.
-
-    Parameters
-    ----------
-    geopackage : str
-        File for the layers.
-    plots : str
-        Folder for the section figures; none if empty.
-    """
-
-    geopackage: str = ""
-    plots: str = ""
-
-
-@dataclass(frozen=True)
-class Study:
-    """The recipe for one fault; a small JSON document.
-
-    Parameters
-    ----------
-    name, fault : str
-    crs : str
-        Projected CRS of the study, as an authority code.
-    length_unit : str
-        Unit of that CRS and of elevations.
-    vertical_datum : str
-        Name of the datum elevations are counted from.
-    sources : tuple of SourceDeclaration
-    construction : ConstructionSpec
-    sections : SectionsSpec
-    transport : TransportSpec
-    picks : PicksSpec
-    outputs : OutputsSpec
-    note : str
-        Free text of the author.
-    """
-
-    name: str
-    fault: str
-    crs: str
-    length_unit: str
-    vertical_datum: str
-    sources: Tuple[SourceDeclaration, ...]
-    construction: ConstructionSpec
-    sections: SectionsSpec = field(default_factory=SectionsSpec)
-    transport: TransportSpec = field(default_factory=TransportSpec)
-    picks: PicksSpec = field(default_factory=PicksSpec)
-    outputs: OutputsSpec = field(default_factory=OutputsSpec)
-    note: str = ""
-
-    def __post_init__(self):
-        if self.length_unit not in LENGTH_UNITS:
-            raise StudyError(
-                "bad-study",
-                f"length_unit is '{self.length_unit}'.",
-                "study",
-                "Use one of: " + ", ".join(LENGTH_UNITS) + ".",
-            )
-        keys = [s.key for s in self.sources]
-        twice = sorted({k for k in keys if keys.count(k) > 1})
-        if twice:
-            raise StudyError(
-                "bad-study", f"source keys used twice: {', '.join(twice)}.", "study"
-            )
-        model_named(self.construction.model, shear_angle=self.construction.shear_angle)
-        if self.construction.solver not in ("march",):
-            raise StudyError(
-                "bad-study",
-                f"there is no solver '{self.construction.solver}'.",
-                "construction",
-                "Use: march.",
-            )
-        if self.construction.samples_per_strip < 4:
-            raise StudyError(
-                "bad-study", "samples_per_strip has to be 4 or more.", "construction"
-            )
-
-    @classmethod
-    def from_dict(cls, document):
-        """Read a study from its JSON object.
-
-        Raises
-        ------
-        StudyError, SourceError
-            If it is not a study of this version, or an entry is unknown, missing
-            or of the wrong type.
-        """
-        if not isinstance(document, dict) or document.get("format") != FORMAT:
-            raise StudyError(
-                "bad-study", f"this is not a study: 'format' is not '{FORMAT}'.", "study"
-            )
-        if document.get("version") != VERSION:
-            raise StudyError(
-                "bad-study",
-                f"the study has version {document.get('version')!r}, this program "
-                f"reads version {VERSION}.",
-                "study",
-                "Update the plugin, or export the study anew.",
-            )
-        rest = {k: v for k, v in document.items() if k not in ("format", "version")}
-        return read_object(cls, rest, "study", **_read_parts(rest))
-
-    @classmethod
-    def from_json(cls, text):
-        """Read a study from JSON text (see `from_dict`)."""
-        try:
-            document = json.loads(text)
-        except ValueError as error:
-            raise StudyError("bad-study", f"the study is not valid JSON: {error}.") from None
-        return cls.from_dict(document)
-
-    def to_dict(self):
-        """Give the study as a JSON object, entries at their default left out."""
-        return {"format": FORMAT, "version": VERSION, **write_object(self)}
-
-    def to_json(self):
-        """Give the study as readable JSON text."""
-        return json.dumps(self.to_dict(), indent=2, ensure_ascii=False) + "\n"
-
-
-def _read_parts(document):
-    """Read the nested objects of a study."""
-    parts = {}
-    simple = {"transport": TransportSpec, "outputs": OutputsSpec}
-    for name, cls in simple.items():
-        if name in document:
-            parts[name] = read_object(cls, document[name], name)
-    if "picks" in document:
-        spec = read_object(PicksSpec, document["picks"], "picks")
-        parts["picks"] = replace(spec, tracked=tuple(spec.tracked))
-    if "sections" in document:
-        parts["sections"] = _read_sections(document["sections"])
-    if "construction" in document:
-        parts["construction"] = _read_construction(document["construction"])
-    if not isinstance(document.get("sources", []), list):
-        raise StudyError("bad-study", "sources has to be a list.", "study")
-    parts["sources"] = tuple(
-        SourceDeclaration.from_dict(s) for s in document.get("sources", [])
-    )
-    return parts
-
-
-def _read_sections(document):
-    given = {}
-    if isinstance(document, dict) and document.get("parallel") is not None:
-        given["parallel"] = read_object(
-            ParallelSpec, document["parallel"], "sections.parallel"
-        )
-    return read_object(SectionsSpec, document, "sections", **given)
-
-
-def _read_construction(document):
-    given = {}
-    if isinstance(document, dict):
-        if "regional" in document:
-            given["regional"] = read_object(
-                RegionalSpec, document["regional"], "construction.regional"
-            )
-        given["further_horizons"] = tuple(
-            read_object(HorizonSpec, h, "construction.further_horizons")
-            for h in document.get("further_horizons", ())
-        )
-    return read_object(ConstructionSpec, document, "construction", **given)
 
 
 @dataclass(frozen=True, eq=False)
@@ -515,7 +197,7 @@ class SectionResult:
     fault: object
     prediction: object
     horizons: tuple
-    doubts: Tuple[Doubt, ...]
+    doubts: tuple
 
     @property
     def all_doubts(self):
@@ -551,7 +233,7 @@ class StudyRun:
     statement: tuple
     transport_azimuth: float
     transport_from: str
-    doubts: Tuple[Doubt, ...]
+    doubts: tuple
     digest: str
 
     @property
@@ -671,127 +353,13 @@ def prepare(study, sources):
             refused = "; ".join(f"{n} {why}" for why, n in data.refused.items())
             raise StudyError(
                 "empty-source",
-                "the layer has no usable feature" + (f" ({refused})." if refused else "."),
+                "the layer has no usable feature"
+                + (f" ({refused})." if refused else "."),
                 declaration.label,
                 "Check the layer and its filter.",
             )
         prepared[declaration.key] = prepare_source(declaration, data, study.length_unit)
     return prepared
-
-
-def _parts(prepared, *roles):
-    """Parts of all line and polygon sources of some roles."""
-    parts = []
-    for p in prepared.values():
-        if p.declaration.role in roles and isinstance(p.data, Features):
-            if p.data.geometry != "point":
-                o = p.data.offsets
-                parts += [p.data.xy[a:b] for a, b in zip(o[:-1], o[1:]) if b - a > 1]
-    return parts
-
-
-def _strike_of(prepared):
-    parts = _parts(prepared, "fault trace")
-    if not parts:
-        parts = [_long_axis(p) for p in _parts(prepared, "cut-off")]
-    if not parts:
-        raise FrameError(
-            "no-strike",
-            "there is no fault trace or cut-off line to take the strike from.",
-            remedy="Declare one, or give the transport azimuth.",
-        )
-    return mean_strike(parts)
-
-
-def _long_axis(part):
-    """Two points along the long axis of a ring or line (its principal direction)."""
-    centred = part - part.mean(axis=0)
-    axis = np.linalg.svd(centred, full_matrices=False)[2][0]
-    reach = np.ptp(centred @ axis)
-    return np.array([np.zeros(2), axis * reach])
-
-
-def resolve_transport(study, prepared, lines):
-    """Find the transport azimuth and say what it comes from.
-
-    The order is: given; else normal to the mean strike, on the side that is
-    declared, else towards the dip direction of the fault, else towards the lower
-    block of the horizon.
-
-    Returns
-    -------
-    azimuth : float
-    how : str
-
-    Raises
-    ------
-    FrameError
-        If nothing tells the side.
-    """
-    spec = study.transport
-    if spec.azimuth is not None:
-        return float(spec.azimuth) % 360.0, "given"
-    strike = _strike_of(prepared)
-    if spec.hw_side:
-        return (
-            transport_azimuth(strike, parse_azimuth(spec.hw_side)),
-            f"normal to the mean strike {strike:.1f}, side declared {spec.hw_side}",
-        )
-    dips = [
-        np.asarray(p.data.columns["dip_azimuth"], dtype=float)
-        for p in prepared.values()
-        if p.declaration.role in ("fault trace", "fault")
-        and isinstance(p.data, Features)
-        and "dip_azimuth" in p.data.columns
-    ]
-    dips = np.concatenate(dips) if dips else np.empty(0)
-    dips = np.radians(dips[np.isfinite(dips)])
-    if len(dips):
-        mean = np.degrees(np.arctan2(np.sin(dips).mean(), np.cos(dips).mean()))
-        return (
-            transport_azimuth(strike, mean % 360.0),
-            f"normal to the mean strike {strike:.1f}, towards the dip direction",
-        )
-    return _transport_from_levels(study, prepared, lines, strike)
-
-
-def _transport_from_levels(study, prepared, lines, strike):
-    """Take the lower block of the horizon as the hanging wall."""
-    right = (strike + 90.0) % 360.0
-    votes = 0.0
-    for line in lines or ():
-        try:
-            frame = SectionFrame(line.section_id, line.vertices, right)
-            picks = _pull_one(study, prepared, frame, PullOptions())
-        except GeomcoreError:
-            continue
-        for table in (picks.depth, picks.time):
-            votes += _lower_side(table, study.construction.horizon)
-    if votes == 0:
-        raise FrameError(
-            "no-side",
-            "nothing tells which side of the fault is the hanging wall.",
-            remedy="Declare hw_side, dip directions on the fault, or the transport azimuth.",
-        )
-    azimuth = right if votes > 0 else (right + 180.0) % 360.0
-    return (
-        azimuth,
-        f"normal to the mean strike {strike:.1f}, towards the lower block of "
-        f"{study.construction.horizon}",
-    )
-
-
-def _lower_side(picks, horizon):
-    """+1 if the horizon is lower beyond the fault (in x), -1 if before it, else 0."""
-    marks = np.r_[picks.of("fault").x, picks.of("cutoff").x]
-    bed = picks.of("horizon", horizon)
-    if not len(marks) or not len(bed):
-        return 0.0
-    near = np.abs(bed.x - marks.mean()) < 0.25 * max(np.ptp(bed.x), 1e-9)
-    before, beyond = bed.z[near & (bed.x < marks.min())], bed.z[near & (bed.x > marks.max())]
-    if not len(before) or not len(beyond):
-        return 0.0
-    return float(np.sign(np.median(before) - np.median(beyond)))
 
 
 def lay_sections(study, prepared, transport):
@@ -803,7 +371,7 @@ def lay_sections(study, prepared, transport):
         Named S01, S02, ... along strike, hanging wall on the right.
     """
     spec = study.sections.parallel
-    trace = _parts(prepared, "fault trace") or _parts(prepared, "cut-off")
+    trace = trace_parts(prepared, "fault trace") or trace_parts(prepared, "cut-off")
     if not trace:
         raise FrameError("no-trace", "parallel sections need a fault trace as a line.")
     lines = parallel_sections(
@@ -848,7 +416,9 @@ def section_frames(study, prepared, lines=None):
     if not frames:
         reasons = " ".join(u.reason for u in unsolved[:3])
         raise FrameError(
-            "no-sections", f"no section line can be used. {reasons}", remedy="Draw others."
+            "no-sections",
+            f"no section line can be used. {reasons}",
+            remedy="Draw others.",
         )
     return SectionSet(tuple(frames), tuple(unsolved), transport, how, tuple(doubts))
 
@@ -909,7 +479,9 @@ def _with_walls(picks, tables, gridded, buffer):
     return leave_out_near_fault(assign_walls(picks, guide), guide, buffer, gridded)
 
 
-def pull_picks(study, prepared, frames, progress=None, cancelled=None, convergence=None):
+def pull_picks(
+    study, prepared, frames, progress=None, cancelled=None, convergence=None
+):
     """Pull all declared sources to all sections.
 
     Returns
@@ -940,12 +512,16 @@ def _count(prepared, picks):
         own.append(table.select(table.source == declaration.key))
     z = np.concatenate([t.z for t in own]) if own else np.empty(0)
     used = np.concatenate([t.used for t in own]) if own else np.empty(0, dtype=bool)
-    reasons = np.concatenate([t.reason for t in own]) if own else np.empty(0, dtype=object)
+    reasons = (
+        np.concatenate([t.reason for t in own]) if own else np.empty(0, dtype=object)
+    )
     left_out = {r: int((reasons == r).sum()) for r in sorted(set(reasons) - {""})}
     refused = dict(prepared.refused)
     raw = prepared.raw_range
     if prepared.count_in == 0:
-        refused = {r: left_out.pop(r) for r in ("no data", "null code") if r in left_out}
+        refused = {
+            r: left_out.pop(r) for r in ("no data", "null code") if r in left_out
+        }
         raw = _raw_range(prepared, z)
     known = z[np.isfinite(z)]
     return SourceCount(
@@ -966,8 +542,6 @@ def _count(prepared, picks):
 
 def _raw_range(prepared, z):
     """Range of a grid's raw values, back from its elevations."""
-    from .sources import vertical_factor
-
     known = z[np.isfinite(z)]
     if not known.size:
         return (np.nan, np.nan)
@@ -999,7 +573,9 @@ def construct(study, frame, picks):
         given = given_cutoffs(picks.depth, horizon, options)
         fault, more = known_fault(picks.depth, given.cutoffs if given else ())
         doubts += more
-        prediction, separation = _predict(study, frame, picks.depth, fault, given, options)
+        prediction, separation = _predict(
+            study, frame, picks.depth, fault, given, options
+        )
         separations.append(separation)
     except GeomcoreError as error:
         prediction = Unsolved(frame.section_id, error.code, str(error))
@@ -1134,61 +710,6 @@ def _regional_of(spec, picks, given):
     if spec.name == given.horizon:
         return base
     own = profile_from_picks(picks.of("horizon", spec.name, "footwall"))
-    return fit_line(own.x, own.z, own.sigma, slope=base.slope if len(own) == 1 else None)
-
-
-def digest(study, frames, picks, sources=None):
-    """SHA-256 over everything read, declared and set, in a fixed order.
-
-    Arrays enter as little-endian float64; a grid enters by its samples on the
-    sections; without sources all columns of the picks enter. The study enters without its outputs, so that the place of a file
-    does not change the result's name.
-    """
-    total = hashlib.sha256()
-    document = study.to_dict()
-    document.pop("outputs", None)
-    text = json.dumps(document, sort_keys=True, ensure_ascii=True)
-    total.update(f"{__version__}\n{text}\n".encode())
-    for frame in frames:
-        total.update(frame.section_id.encode())
-        _update(total, frame.vertices)
-    for key in sorted(sources or ()):
-        total.update(key.encode())
-        if isinstance(sources[key], Features):
-            _update_features(total, sources[key])
-    sampled = None if sources is None else _sampled_sources(sources)
-    for section_id in sorted(picks):
-        for table in (picks[section_id].depth, picks[section_id].time):
-            _update_picks(total, table, sampled)
-    return total.hexdigest()
-
-
-def _sampled_sources(sources):
-    """Keys of the sources whose values are samples of a surface."""
-    return sorted(
-        k for k, d in sources.items() if isinstance(d, Grid) or d.surface is not None
+    return fit_line(
+        own.x, own.z, own.sigma, slope=base.slope if len(own) == 1 else None
     )
-
-
-def _update_features(total, data):
-    for column in (data.xy, data.value, data.offsets, data.fid):
-        _update(total, column)
-    for name in sorted(data.columns):
-        _update(total, data.columns[name])
-
-
-def _update_picks(total, table, sampled):
-    names = ("x", "z", "sigma_z", "dip", "kind", "name", "wall", "used")
-    if sampled is not None:
-        table = table.select(np.isin(table.source.astype(str), sampled))
-        names = ("x", "z")
-    for name in names:
-        _update(total, getattr(table, name))
-
-
-def _update(total, column):
-    column = np.asarray(column)
-    if column.dtype.kind in "OUS":
-        total.update("\x1f".join(map(str, column.ravel())).encode())
-    else:
-        total.update(np.ascontiguousarray(column, dtype="<f8").tobytes())

@@ -1,0 +1,143 @@
+"""What is doubtful about a march that runs."""
+
+import numpy as np
+
+from .errors import Doubt
+
+__all__ = ["march_doubts"]
+
+#: Strips beyond which a march without a deep tie should not be trusted
+#: (methods.md section 13, rule 2).
+MANY_STRIPS = 6
+
+
+def march_doubts(problem, solution, trace, detachment):
+    """Look over the inputs and the result of a march.
+
+    Parameters
+    ----------
+    problem : Problem
+    solution : Solution
+    trace : FaultTrace
+    detachment : float or None
+
+    Returns
+    -------
+    list of Doubt
+    """
+    found = [
+        *_of_start(problem),
+        *_of_bed(problem),
+        *_of_shear(problem),
+        *_of_trace(trace),
+        *_of_reach(solution, detachment),
+        *_of_strips(problem, solution),
+    ]
+    return [Doubt(code, text, problem.where) for code, text in found]
+
+
+def _of_start(problem):
+    hang, fault = problem.separation.hanging_wall, problem.fault
+    if not fault.is_known(hang.x):
+        yield (
+            "assumed-piece",
+            "the fault between its last known point and the hanging-wall cut-off is "
+            f"assumed: straight, by {fault.below_from}.",
+        )
+
+
+def _of_bed(problem):
+    bed, heave = problem.bed, problem.separation.heave
+    spacing = np.diff(bed.x)
+    if not len(spacing):
+        return
+    if spacing[0] > 0.5 * heave:
+        yield (
+            "horizon-ends-before-fault",
+            f"the hanging-wall horizon ends {spacing[0]:.0f} before its cut-off and "
+            "was extended over that distance.",
+        )
+    spacing = spacing[1:]
+    if not len(spacing):
+        return
+    if heave < 2.0 * np.median(spacing):
+        yield (
+            "small-heave",
+            f"the heave of {heave:.0f} is small against the pick spacing of "
+            f"{np.median(spacing):.0f}.",
+        )
+    if spacing.max() > problem.oblique_heave:
+        i = int(np.argmax(spacing))
+        yield (
+            "gap-in-bed",
+            f"no picks for {spacing[i]:.0f} beyond x = {bed.x[i + 1]:.0f}, more than a "
+            "strip; the bed is straight there by assumption.",
+        )
+
+
+def _of_shear(problem):
+    """Doubt planes within 10 degrees of the cut-off dip or the bed."""
+    a, bed = problem.model.shear_angle, problem.bed
+    if a == 0 or len(bed) < 3:
+        return
+    slope = np.degrees(np.arctan(np.diff(bed.z) / np.diff(bed.x)))
+    if a > 0:
+        margin = 90.0 - a - np.percentile(slope, 95)
+    else:
+        fault_margin = 90.0 + a - problem.separation.cutoff_dip
+        margin = min(fault_margin, 90.0 + a + np.percentile(slope, 5))
+    if margin < 10.0:
+        yield (
+            "shear-near-parallel",
+            f"the shear planes are within {max(margin, 0):.0f} degrees of the fault or "
+            "the bed.",
+        )
+
+
+def _of_trace(trace):
+    dip = np.degrees(np.arctan2(-np.diff(trace.z), np.diff(trace.x)))
+    predicted = trace.strip[1:] > 0
+    if not predicted.any():
+        return
+    dip, x = dip[predicted], trace.x[1:][predicted]
+    if dip.min() < -2.0:
+        at = x[int(np.argmin(dip))]
+        yield "fault-rises", f"the predicted fault rises outwards near x = {at:.0f}."
+    if dip.max() > 80.0:
+        at = x[int(np.argmax(dip))]
+        yield (
+            "fault-steep",
+            f"the predicted fault dips {dip.max():.0f} degrees near x = {at:.0f}.",
+        )
+
+
+def _of_reach(solution, detachment):
+    if detachment is None:
+        yield (
+            "regional-not-reached",
+            "the bed is not back at its far position where the picks end; the fault "
+            f"goes down to {solution.z[-1]:.0f} at least, its detachment is not "
+            "reached.",
+        )
+
+
+def _of_strips(problem, solution):
+    strips = int(solution.strip[-1])
+    if strips > MANY_STRIPS:
+        yield (
+            "many-strips",
+            f"{strips} strips below the cut-off without a deep tie; errors grow with "
+            "every strip.",
+        )
+    beyond = slice(solution.start, None)
+    u, bed_z = solution.u[beyond], solution.bed_z[beyond]
+    sigma = np.interp(u, solution.bed.x, solution.bed.sigma)
+    level = problem.regional_at(u)
+    spread = np.hypot(sigma, problem.regional.sigma_at(u))
+    above = bed_z - level > 3.0 * spread + 1e-3 * problem.separation.throw
+    if above.any():
+        at = u[above][0] + bed_z[above][0] * problem.tan
+        yield (
+            "bed-above-regional",
+            f"the bed lies above the regional beyond x = {at:.0f}.",
+        )

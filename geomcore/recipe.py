@@ -1,0 +1,341 @@
+"""The study document: what it says, how it is read and written."""
+
+import json
+from dataclasses import dataclass, field, replace
+from typing import Optional
+
+from .documents import read_object, write_object
+from .errors import StudyError
+from .kinematics import MODELS, model_named
+from .sources import SourceDeclaration
+from .units import LENGTH_UNITS
+
+__all__ = [
+    "FORMAT",
+    "SOLVERS",
+    "VERSION",
+    "ConstructionSpec",
+    "HorizonSpec",
+    "OutputsSpec",
+    "ParallelSpec",
+    "PicksSpec",
+    "RegionalSpec",
+    "SectionsSpec",
+    "Study",
+    "TransportSpec",
+]
+
+FORMAT = "heaveline-study"
+VERSION = 1
+SOLVERS = ("march",)
+
+
+@dataclass(frozen=True)
+class ParallelSpec:
+    """Parallel sections to be laid across the fault trace (see `parallel_sections`)."""
+
+    spacing: Optional[float] = None
+    count: Optional[int] = None
+    footwall_length: float = 2000.0
+    hanging_wall_length: float = 8000.0
+    extent: Optional[tuple] = None
+
+
+@dataclass(frozen=True)
+class SectionsSpec:
+    """Where the section lines come from: a layer, or laid parallel.
+
+    Parameters
+    ----------
+    uri : str
+        Line layer of hand-drawn or earlier sections.
+    id_field : str
+        Attribute that names them; the feature id if empty.
+    parallel : ParallelSpec, optional
+        Lay them across the fault trace instead.
+    """
+
+    uri: str = ""
+    id_field: str = ""
+    parallel: Optional[ParallelSpec] = None
+
+
+@dataclass(frozen=True)
+class TransportSpec:
+    """Transport azimuth: given, or normal to the mean fault strike.
+
+    Parameters
+    ----------
+    azimuth : float, optional
+        Grid azimuth towards the hanging wall, degrees.
+    hw_side : str
+        Compass point or azimuth that points into the hanging wall.
+    """
+
+    azimuth: Optional[float] = None
+    hw_side: str = ""
+
+
+@dataclass(frozen=True)
+class PicksSpec:
+    """How picks are brought in (see `PullOptions`), and fit distances.
+
+    Parameters
+    ----------
+    corridor, fault_buffer, grid_step
+        As in `PullOptions`.
+    separation_from, separation_to : float
+        The vertical separation of a horizon is measured by straight lines fitted
+        between these distances outside its cut-offs.
+    tracked : tuple of str
+        Keys of point sources that were tracked or gridded, so that values drawn
+        across the fault gap are looked for as in grids.
+    """
+
+    corridor: float = 500.0
+    fault_buffer: float = 50.0
+    grid_step: Optional[float] = None
+    separation_from: float = 50.0
+    separation_to: float = 500.0
+    tracked: tuple = ()
+
+
+@dataclass(frozen=True)
+class RegionalSpec:
+    """Regional of the horizon: given, or fitted.
+
+    Parameters
+    ----------
+    z : float, optional
+        Its elevation at the footwall cut-off.
+    dip : float, optional
+        Its dip in degrees, positive down towards the hanging wall.
+    footwall_within : float, optional
+        Only footwall picks within this distance of the fault are fitted.
+    far_from : float, optional
+        Hanging-wall picks farther than this beyond the fault are judged to be back
+        at regional; they are moved back by the oblique heave and fitted too.
+    """
+
+    z: Optional[float] = None
+    dip: Optional[float] = None
+    footwall_within: Optional[float] = None
+    far_from: Optional[float] = None
+
+
+@dataclass(frozen=True)
+class HorizonSpec:
+    """A further horizon to be predicted from the fault.
+
+    Parameters
+    ----------
+    name : str
+    offset : float, optional
+        Elevation of its regional above that of the construction's horizon
+        (negative below); its own footwall picks are used if not given.
+    """
+
+    name: str
+    offset: Optional[float] = None
+
+
+@dataclass(frozen=True)
+class ConstructionSpec:
+    """What is constructed and how.
+
+    Parameters
+    ----------
+    horizon : str
+        Horizon whose rollover makes the fault.
+    model : str
+        Name of a kinematic model.
+    shear_angle : float
+        Degrees from the vertical, positive antithetic.
+    shear_angle_sigma : float
+        One standard deviation of it, for the stated sigma.
+    solver : str
+        ``march``.
+    samples_per_strip : int
+    regional : RegionalSpec
+    further_horizons : tuple of HorizonSpec
+    """
+
+    horizon: str
+    model: str = MODELS[0].NAME
+    shear_angle: float = 0.0
+    shear_angle_sigma: float = 0.0
+    solver: str = "march"
+    samples_per_strip: int = 40
+    regional: RegionalSpec = field(default_factory=RegionalSpec)
+    further_horizons: tuple = ()
+
+
+@dataclass(frozen=True)
+class OutputsSpec:
+    """What the study writes, relative to the study file.
+
+    Parameters
+    ----------
+    geopackage : str
+        File for the layers.
+    plots : str
+        Folder for the section figures; none if empty.
+    """
+
+    geopackage: str = ""
+    plots: str = ""
+
+
+@dataclass(frozen=True)
+class Study:
+    """The recipe for one fault; a small JSON document.
+
+    Parameters
+    ----------
+    name, fault : str
+    crs : str
+        Projected CRS of the study, as an authority code.
+    length_unit : str
+        Unit of that CRS and of elevations.
+    vertical_datum : str
+        Name of the datum elevations are counted from.
+    sources : tuple of SourceDeclaration
+    construction : ConstructionSpec
+    sections : SectionsSpec
+    transport : TransportSpec
+    picks : PicksSpec
+    outputs : OutputsSpec
+    note : str
+        Free text of the author.
+    """
+
+    name: str
+    fault: str
+    crs: str
+    length_unit: str
+    vertical_datum: str
+    sources: tuple
+    construction: ConstructionSpec
+    sections: SectionsSpec = field(default_factory=SectionsSpec)
+    transport: TransportSpec = field(default_factory=TransportSpec)
+    picks: PicksSpec = field(default_factory=PicksSpec)
+    outputs: OutputsSpec = field(default_factory=OutputsSpec)
+    note: str = ""
+
+    def __post_init__(self):
+        if self.length_unit not in LENGTH_UNITS:
+            raise StudyError(
+                "bad-study",
+                f"length_unit is '{self.length_unit}'.",
+                "study",
+                "Use one of: " + ", ".join(LENGTH_UNITS) + ".",
+            )
+        keys = [s.key for s in self.sources]
+        twice = sorted({k for k in keys if keys.count(k) > 1})
+        if twice:
+            raise StudyError(
+                "bad-study", f"source keys used twice: {', '.join(twice)}.", "study"
+            )
+        model_named(self.construction.model, shear_angle=self.construction.shear_angle)
+        if self.construction.solver not in SOLVERS:
+            raise StudyError(
+                "bad-study",
+                f"there is no solver '{self.construction.solver}'.",
+                "construction",
+                "Use one of: " + ", ".join(SOLVERS) + ".",
+            )
+        if self.construction.samples_per_strip < 4:
+            raise StudyError(
+                "bad-study", "samples_per_strip has to be 4 or more.", "construction"
+            )
+
+    @classmethod
+    def from_dict(cls, document):
+        """Read a study from its JSON object.
+
+        Raises
+        ------
+        StudyError, SourceError
+            If it is not a study of this version, or an entry is unknown, missing
+            or of the wrong type.
+        """
+        if not isinstance(document, dict) or document.get("format") != FORMAT:
+            raise StudyError(
+                "bad-study",
+                f"this is not a study: 'format' is not '{FORMAT}'.",
+                "study",
+            )
+        if document.get("version") != VERSION:
+            raise StudyError(
+                "bad-study",
+                f"the study has version {document.get('version')!r}, this program "
+                f"reads version {VERSION}.",
+                "study",
+                "Update the plugin, or export the study anew.",
+            )
+        rest = {k: v for k, v in document.items() if k not in ("format", "version")}
+        return read_object(cls, rest, "study", **_read_parts(rest))
+
+    @classmethod
+    def from_json(cls, text):
+        """Read a study from JSON text (see `from_dict`)."""
+        try:
+            document = json.loads(text)
+        except ValueError as error:
+            raise StudyError(
+                "bad-study", f"the study is not valid JSON: {error}."
+            ) from None
+        return cls.from_dict(document)
+
+    def to_dict(self):
+        """Give the study as a JSON object, entries at their default left out."""
+        return {"format": FORMAT, "version": VERSION, **write_object(self)}
+
+    def to_json(self):
+        """Give the study as readable JSON text."""
+        return json.dumps(self.to_dict(), indent=2, ensure_ascii=False) + "\n"
+
+
+def _read_parts(document):
+    """Read the nested objects of a study."""
+    parts = {}
+    simple = {"transport": TransportSpec, "outputs": OutputsSpec}
+    for name, cls in simple.items():
+        if name in document:
+            parts[name] = read_object(cls, document[name], name)
+    if "picks" in document:
+        spec = read_object(PicksSpec, document["picks"], "picks")
+        parts["picks"] = replace(spec, tracked=tuple(spec.tracked))
+    if "sections" in document:
+        parts["sections"] = _read_sections(document["sections"])
+    if "construction" in document:
+        parts["construction"] = _read_construction(document["construction"])
+    if not isinstance(document.get("sources", []), list):
+        raise StudyError("bad-study", "sources has to be a list.", "study")
+    parts["sources"] = tuple(
+        SourceDeclaration.from_dict(s) for s in document.get("sources", [])
+    )
+    return parts
+
+
+def _read_sections(document):
+    given = {}
+    if isinstance(document, dict) and document.get("parallel") is not None:
+        given["parallel"] = read_object(
+            ParallelSpec, document["parallel"], "sections.parallel"
+        )
+    return read_object(SectionsSpec, document, "sections", **given)
+
+
+def _read_construction(document):
+    given = {}
+    if isinstance(document, dict):
+        if "regional" in document:
+            given["regional"] = read_object(
+                RegionalSpec, document["regional"], "construction.regional"
+            )
+        given["further_horizons"] = tuple(
+            read_object(HorizonSpec, h, "construction.further_horizons")
+            for h in document.get("further_horizons", ())
+        )
+    return read_object(ConstructionSpec, document, "construction", **given)

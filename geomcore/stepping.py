@@ -1,0 +1,76 @@
+"""The step of every column construction: each node from its column's origin."""
+
+import numpy as np
+
+from .errors import ConstructionError
+
+__all__ = ["hat_matrix", "march"]
+
+
+def march(origin_index, origin_fraction, start, increment):
+    """Carry the fault outwards strip by strip.
+
+    Parameters
+    ----------
+    origin_index : ndarray (n,) of int
+        Node before the place where the column of each node came from.
+    origin_fraction : ndarray (n,)
+        Where between that node and the next, 0 to 1.
+    start : ndarray (m, ...)
+        F at the first m nodes (the known or assumed piece).
+    increment : ndarray (n, ...)
+        B at each node minus R at its origin; the first m rows are not used.
+        Further axes run through together (several beds, or derivatives).
+
+    Returns
+    -------
+    ndarray (n, ...)
+        F[i] = F(origin of i) + increment[i] (eq. 5 of methods.md; 2 and 3 are
+        special cases).
+
+    Notes
+    -----
+    A node can be solved when its origin lies on the solved part, so a whole strip
+    is solved in one step.
+    """
+    n = len(origin_index)
+    fault = np.empty((n, *np.shape(increment)[1:]))
+    done = len(start)
+    fault[:done] = start
+    shape = (-1,) + (1,) * (np.ndim(increment) - 1)
+    needed = origin_index + (origin_fraction > 0)
+    while done < n:
+        stop = done + int(np.argmax(np.r_[needed[done:] >= done, True]))
+        if stop == done:
+            raise ConstructionError(
+                "no-progress", "a column has not moved: its origin lies beyond itself."
+            )
+        i, f = origin_index[done:stop], origin_fraction[done:stop].reshape(shape)
+        inner = fault[i] if not f.any() else (1 - f) * fault[i] + f * fault[i + 1]
+        fault[done:stop] = inner + increment[done:stop]
+        done = stop
+    return fault
+
+
+def hat_matrix(at, points):
+    """Give the weights of linear interpolation.
+
+    Parameters
+    ----------
+    at : ndarray (n,)
+        Where values are wanted.
+    points : ndarray (m,)
+        Where they are known, growing.
+
+    Returns
+    -------
+    ndarray (n, m)
+        values at `at` = matrix @ values at `points`; ends are held.
+    """
+    matrix = np.zeros((len(at), len(points)))
+    j = np.clip(np.searchsorted(points, at, side="right") - 1, 0, len(points) - 2)
+    f = np.clip((at - points[j]) / (points[j + 1] - points[j]), 0.0, 1.0)
+    rows = np.arange(len(at))
+    matrix[rows, j] = 1.0 - f
+    matrix[rows, j + 1] += f
+    return matrix

@@ -1,0 +1,131 @@
+"""The transport azimuth: given, or from the strike and what tells the side."""
+
+import numpy as np
+
+from .errors import FrameError, GeomcoreError
+from .picks import Picks, PullOptions, pull_source
+from .section import SectionFrame, mean_strike, parse_azimuth, transport_azimuth
+from .sources import Features
+
+__all__ = ["resolve_transport", "trace_parts"]
+
+
+def trace_parts(prepared, *roles):
+    """Parts of all line and polygon sources of some roles."""
+    parts = []
+    for p in prepared.values():
+        if p.declaration.role not in roles or not isinstance(p.data, Features):
+            continue
+        if p.data.geometry != "point":
+            o = p.data.offsets
+            parts += [p.data.xy[a:b] for a, b in zip(o[:-1], o[1:]) if b - a > 1]
+    return parts
+
+
+def _strike_of(prepared):
+    parts = trace_parts(prepared, "fault trace")
+    if not parts:
+        parts = [_long_axis(p) for p in trace_parts(prepared, "cut-off")]
+    if not parts:
+        raise FrameError(
+            "no-strike",
+            "there is no fault trace or cut-off line to take the strike from.",
+            remedy="Declare one, or give the transport azimuth.",
+        )
+    return mean_strike(parts)
+
+
+def _long_axis(part):
+    """Two points along the long axis of a ring or line (its principal direction)."""
+    centred = part - part.mean(axis=0)
+    axis = np.linalg.svd(centred, full_matrices=False)[2][0]
+    reach = np.ptp(centred @ axis)
+    return np.array([np.zeros(2), axis * reach])
+
+
+def resolve_transport(study, prepared, lines):
+    """Find the transport azimuth and say what it comes from.
+
+    The order is: given; else normal to the mean strike, on the side that is
+    declared, else towards the dip direction of the fault, else towards the lower
+    block of the horizon.
+
+    Returns
+    -------
+    azimuth : float
+    how : str
+
+    Raises
+    ------
+    FrameError
+        If nothing tells the side.
+    """
+    spec = study.transport
+    if spec.azimuth is not None:
+        return float(spec.azimuth) % 360.0, "given"
+    strike = _strike_of(prepared)
+    if spec.hw_side:
+        return (
+            transport_azimuth(strike, parse_azimuth(spec.hw_side)),
+            f"normal to the mean strike {strike:.1f}, side declared {spec.hw_side}",
+        )
+    dips = [
+        np.asarray(p.data.columns["dip_azimuth"], dtype=float)
+        for p in prepared.values()
+        if p.declaration.role in ("fault trace", "fault")
+        and isinstance(p.data, Features)
+        and "dip_azimuth" in p.data.columns
+    ]
+    dips = np.concatenate(dips) if dips else np.empty(0)
+    dips = np.radians(dips[np.isfinite(dips)])
+    if len(dips):
+        mean = np.degrees(np.arctan2(np.sin(dips).mean(), np.cos(dips).mean()))
+        return (
+            transport_azimuth(strike, mean % 360.0),
+            f"normal to the mean strike {strike:.1f}, towards the dip direction",
+        )
+    return _transport_from_levels(study, prepared, lines, strike)
+
+
+def _transport_from_levels(study, prepared, lines, strike):
+    """Take the lower block of the horizon as the hanging wall."""
+    right = (strike + 90.0) % 360.0
+    votes = 0.0
+    for line in lines or ():
+        try:
+            frame = SectionFrame(line.section_id, line.vertices, right)
+            tables = [pull_source(p, frame, PullOptions()) for p in prepared.values()]
+        except GeomcoreError:
+            continue
+        for domain in ("depth", "time"):
+            own = [t for t in tables if t.domain == domain]
+            table = Picks.empty(line.section_id, domain).joined(own)
+            votes += _lower_side(table, study.construction.horizon)
+    if votes == 0:
+        raise FrameError(
+            "no-side",
+            "nothing tells which side of the fault is the hanging wall.",
+            remedy="Declare hw_side, dips of the fault, or the transport azimuth.",
+        )
+    azimuth = right if votes > 0 else (right + 180.0) % 360.0
+    return (
+        azimuth,
+        f"normal to the mean strike {strike:.1f}, towards the lower block of "
+        f"{study.construction.horizon}",
+    )
+
+
+def _lower_side(picks, horizon):
+    """+1 if the horizon is lower beyond the fault (in x), -1 if before it, else 0."""
+    marks = np.r_[picks.of("fault").x, picks.of("cutoff").x]
+    bed = picks.of("horizon", horizon)
+    if not len(marks) or not len(bed):
+        return 0.0
+    near = np.abs(bed.x - marks.mean()) < 0.25 * max(np.ptp(bed.x), 1e-9)
+    before, beyond = (
+        bed.z[near & (bed.x < marks.min())],
+        bed.z[near & (bed.x > marks.max())],
+    )
+    if not len(before) or not len(beyond):
+        return 0.0
+    return float(np.sign(np.median(before) - np.median(beyond)))
