@@ -1,4 +1,4 @@
-"""The march: the fault from the rollover, and the rollover from the fault."""
+"""The march: the fault from the rollover, strip by strip."""
 
 from dataclasses import dataclass, field
 from typing import Optional
@@ -22,7 +22,6 @@ __all__ = [
     "bed_from",
     "march",
     "predict_fault",
-    "predict_horizon",
     "solve",
 ]
 
@@ -299,14 +298,14 @@ def solve(problem):
     -------
     Solution
     """
-    foot = problem.separation.footwall
+    foot, hang = problem.separation.footwall, problem.separation.hanging_wall
     bed = _bed_in_frame(problem)
     m = problem.options.samples_per_strip
-    step = problem.oblique_heave / m
     u0 = foot.x - foot.z * problem.tan
+    step = (hang.x - hang.z * problem.tan - u0) / m
     count = int(np.floor((bed.x[-1] - u0) / step + 1e-6)) + 1
     u = u0 + step * np.arange(max(count, m + 1))
-    origin = problem.model.origin(u, problem.oblique_heave)
+    origin = problem.model.origin(u, bed, problem)
     at = np.maximum((origin - u0) / step, 0.0)
     index = np.floor(at + 1e-6).astype(int)
     fraction = np.where(np.abs(at - index) < 1e-6, 0.0, at - index)
@@ -499,78 +498,3 @@ def _detachment(problem, solution):
     if np.all(np.abs(solution.bed_z[last] - origin) <= 2.0 * spread):
         return float(solution.z[last].mean())
     return None
-
-
-def predict_horizon(
-    trace_x, trace_z, regional, oblique_heave, shear_angle, samples=400
-):
-    """Predict a horizon in the hanging wall from the fault.
-
-    Parameters
-    ----------
-    trace_x, trace_z : ndarray (n,)
-        The fault, x growing.
-    regional : Regional
-        Of the horizon to be predicted.
-    oblique_heave : float
-        H = heave + throw tan(a); pre-growth horizons of one fault share it.
-    shear_angle : float
-        Degrees from the vertical, positive antithetic.
-    samples : int
-        Points of the result.
-
-    Returns
-    -------
-    horizon : Profile
-        From its hanging-wall cut-off as far as the fault is given.
-    footwall, hanging_wall : tuple (x, z)
-        Cut-offs.
-
-    Raises
-    ------
-    ConstructionError
-        If the regional does not meet the fault, or the fault is not given for one
-        oblique heave beyond that.
-
-    Notes
-    -----
-    B~(u + H) = R~(u) + F~(u + H) - F~(u), eq. 3 of methods.md.
-    """
-    tan = np.tan(np.radians(shear_angle))
-    fu = to_shear_frame(trace_x, trace_z, shear_angle)
-    if np.any(np.diff(fu) <= 0):
-        raise ConstructionError(
-            "shear-parallel-to-fault",
-            "the fault is not single-valued along these shear planes.",
-            remedy="Use a smaller synthetic angle.",
-        )
-
-    def level(u):
-        at_zero = regional.z0 - regional.slope * regional.x0
-        return (at_zero + regional.slope * u) / (1.0 - regional.slope * tan)
-
-    gap = np.asarray(trace_z) - level(fu)
-    hit = np.flatnonzero((gap[:-1] >= 0) & (gap[1:] < 0))
-    if not len(hit):
-        raise ConstructionError(
-            "no-cutoff", "the horizon's regional does not meet the fault."
-        )
-    i = int(hit[0])
-    u_foot = fu[i] + (fu[i + 1] - fu[i]) * gap[i] / (gap[i] - gap[i + 1])
-    u_hang = u_foot + oblique_heave
-    if u_hang >= fu[-1]:
-        raise ConstructionError(
-            "fault-too-short",
-            "the fault ends within one heave of the horizon's footwall cut-off.",
-        )
-    own = fu[(fu > u_hang) & (fu < fu[-1])]
-    u = np.unique(np.r_[np.linspace(u_hang, fu[-1], samples), own])
-    outer, inner = np.interp(u, fu, trace_z), np.interp(u - oblique_heave, fu, trace_z)
-    z = level(u - oblique_heave) + outer - inner
-    x = from_shear_frame(u, z, shear_angle)
-    foot_z = float(np.interp(u_foot, fu, trace_z))
-    return (
-        Profile(x, z, np.zeros(len(x))),
-        (float(u_foot + foot_z * tan), foot_z),
-        (float(x[0]), float(z[0])),
-    )

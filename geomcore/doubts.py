@@ -132,12 +132,14 @@ def _of_strips(problem, solution):
     beyond = slice(solution.start, None)
     u, bed_z = solution.u[beyond], solution.bed_z[beyond]
     sigma = np.interp(u, solution.bed.x, solution.bed.sigma)
-    level = problem.regional_at(u)
+    # one heave back: a bed over a level detachment ends there, not at R itself
+    level = solution.regional_z[beyond]
     spread = np.hypot(sigma, problem.regional.sigma_at(u))
     above = bed_z - level > 3.0 * spread + 1e-3 * problem.separation.throw
     if above.any():
         at = u[above][0] + bed_z[above][0] * problem.tan
         yield (
             "bed-above-regional",
-            f"the bed lies above the regional beyond x = {at:.0f}.",
+            f"the bed lies above its regional, moved out by the heave, beyond "
+            f"x = {at:.0f}; the fault would rise there.",
         )

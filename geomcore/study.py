@@ -9,7 +9,7 @@ from typing import Optional
 
 import numpy as np
 
-from .construction import MarchOptions, predict_fault, predict_horizon
+from .construction import MarchOptions, predict_fault
 from .cutoffs import (
     CutoffOptions,
     given_cutoffs,
@@ -20,6 +20,7 @@ from .cutoffs import (
 from .digest import digest
 from .errors import Doubt, FrameError, GeomcoreError, StudyError, Unsolved
 from .fault import known_fault
+from .forward import predict_horizon
 from .kinematics import model_named
 from .picks import Picks, PullOptions, SourceCount, prepare_source, pull_source
 from .profile import (
