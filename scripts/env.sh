@@ -1,3 +1,4 @@
+# shellcheck shell=bash disable=SC2034
 # What every script shares: where things are, and how QGIS is run without a screen.
 # Source it (". scripts/env.sh"); it changes into the repository root.
 

@@ -54,8 +54,9 @@ as_root() {
 apt() { as_root apt-get -o DPkg::Lock::Timeout=600 -o Acquire::Retries=3 "$@"; }
 
 check_may_install() {
-    command -v dpkg-query >/dev/null && command -v apt-get >/dev/null ||
+    if ! command -v dpkg-query >/dev/null || ! command -v apt-get >/dev/null; then
         die "this set-up needs Debian 12 or 13 (no dpkg or apt-get found here)"
+    fi
     # shellcheck source=/dev/null
     . /etc/os-release
     case "${ID:-}:${VERSION_CODENAME:-}" in
@@ -88,6 +89,7 @@ add_backports() {
         keys='[signed-by=/usr/share/keyrings/debian-archive-keyring.gpg] '
     fi
     list=/etc/apt/sources.list.d/$suite.list
+    # shellcheck disable=SC2016
     as_root sh -c 'printf "%s\n" "$1" > "$2"' sh "deb $keys$mirror $suite main" "$list"
 }
 
@@ -102,11 +104,12 @@ install_packages() {
         target=(-t "$VERSION_CODENAME-backports")
     fi
     candidate=$(apt-cache policy "${target[@]}" python3-qgis | awk '/Candidate:/ {print $2}')
-    [ "$candidate" != "(none)" ] && new_enough "$candidate" || {
+    # apt says "(none)" where it has nothing; an empty version sorts before all.
+    if ! new_enough "${candidate#(none)}"; then
         tail -n 25 "$LOG" >&2
         die "the mirror offers no QGIS $MIN_QGIS or newer (found: ${candidate:-nothing});" \
             "is there a network, and does the mirror carry ${target[1]:-this suite}?"
-    }
+    fi
     # QGIS alone comes from backports; the rest stays with the main suite.
     quietly "QGIS could not be installed: is there a network, and room on the disk?" \
         apt install -y --no-install-recommends "${target[@]}" qgis python3-qgis qgis-providers
