@@ -1,0 +1,1 @@
+"""The QGIS side of Heaveline: layers in, layers out; the geometry is in geomcore."""

@@ -1,0 +1,1 @@
+"""What a run is handed over as: rows of layers, styles, metadata, projects."""
