@@ -83,8 +83,8 @@ add_backports() {
     if grep -q "^$suite|" <<< "$targets"; then return; fi
     mirror=$(awk -F'|' -v c="$VERSION_CODENAME" \
         '$1 == c || $2 == c {print $3; exit}' <<< "$targets")
-    [ -n "$mirror" ] || die "apt has no mirror for $VERSION_CODENAME set up: add one" \
-        "to /etc/apt/sources.list and run this again"
+    [ -n "$mirror" ] || die "apt could read no list of packages for $VERSION_CODENAME:" \
+        "is there a network, and is a mirror set up under /etc/apt? (log: build/setup.log)"
     if [ -r /usr/share/keyrings/debian-archive-keyring.gpg ]; then
         keys='[signed-by=/usr/share/keyrings/debian-archive-keyring.gpg] '
     fi
