@@ -103,7 +103,8 @@ install_packages() {
         quietly "the package lists could not be read: is there a network?" apt update
         target=(-t "$VERSION_CODENAME-backports")
     fi
-    candidate=$(apt-cache policy "${target[@]}" python3-qgis | awk '/Candidate:/ {print $2}')
+    candidate=$(apt-cache policy "${target[@]}" python3-qgis 2>> "$LOG" |
+        awk '/Candidate:/ {print $2}') || true # an unknown suite is told just below
     # apt says "(none)" where it has nothing; an empty version sorts before all.
     if ! new_enough "${candidate#(none)}"; then
         tail -n 25 "$LOG" >&2
