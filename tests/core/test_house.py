@@ -31,7 +31,7 @@ from house_rules import (
 
 SHIPPED = ("__init__.py", "geomcore", "plugin")
 HAND_OVER = ("plugin/algorithms",)
-WITHOUT_WIDGETS = ("plugin/algorithms", "plugin/layers.py", "plugin/outputs")
+WITHOUT_WIDGETS = ("plugin/algorithms", "plugin/layers", "plugin/outputs")
 
 
 def knows_qgis(source):
