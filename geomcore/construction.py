@@ -1,4 +1,4 @@
-"""The march: the fault from the rollover, strip by strip."""
+"""The construction: the fault from the rollover of a horizon."""
 
 from dataclasses import dataclass, field
 from typing import Optional
@@ -7,39 +7,23 @@ import numpy as np
 
 from .doubts import march_doubts
 from .errors import ConstructionError
-from .kinematics import from_shear_frame, to_shear_frame
-from .profile import Profile, pool_to_increasing
-from .stepping import march
-from .uncertainty import march_sigma
+from .fitting import solve_by_fit
+from .kinematics import from_shear_frame
+from .problem import MarchOptions, Problem, bed_from, solve_march
+from .profile import pool_to_increasing
+from .uncertainty import solution_sigma
 
 __all__ = [
+    "SOLVERS",
     "FaultTrace",
     "MarchOptions",
     "MarchTable",
     "Prediction",
-    "Problem",
-    "Solution",
-    "bed_from",
-    "march",
     "predict_fault",
-    "solve",
 ]
 
-
-@dataclass(frozen=True)
-class MarchOptions:
-    """How finely the march is sampled and when the detachment counts as reached.
-
-    Parameters
-    ----------
-    samples_per_strip : int
-        Nodes in one oblique heave; the step is the heave over it, exactly.
-    shear_angle_sigma : float
-        One standard deviation of the shear angle in degrees, for the stated sigma.
-    """
-
-    samples_per_strip: int = 40
-    shear_angle_sigma: float = 0.0
+#: The two solvers of the kernel: the plain march and the least-squares fit.
+SOLVERS = {"march": solve_march, "fit": solve_by_fit}
 
 
 @dataclass(frozen=True, eq=False)
@@ -55,7 +39,7 @@ class FaultTrace:
     strip : ndarray (n,) of int
         0 down to the hanging-wall cut-off, then the number of the strip.
     constrained : ndarray (n,) of str
-        ``known``, ``assumed`` or ``predicted``.
+        ``known``, ``assumed``, ``predicted`` or ``out of reach``.
     sigma_z : ndarray (n,)
         One standard deviation of z at fixed x, NaN where nothing can be said.
     """
@@ -114,7 +98,7 @@ class Prediction:
     model : object
         Kinematic model used.
     solver : str
-        ``march``.
+        ``march`` or ``fit``.
     separation : Separation
     regional : Regional
         Written against the footwall cut-off.
@@ -127,6 +111,8 @@ class Prediction:
     deepest_z : float
         Last elevation reached: the fault goes at least this deep.
     doubts : tuple of Doubt
+    detail : FitDetail or None
+        What the fit has to tell besides.
     """
 
     section_id: str
@@ -141,122 +127,12 @@ class Prediction:
     detachment_z: Optional[float]
     deepest_z: float
     doubts: tuple = field(default=())
+    detail: object = None
 
     @property
     def strips(self):
         """Number of the last strip."""
         return int(self.trace.strip.max())
-
-
-@dataclass(frozen=True, eq=False)
-class Problem:
-    """What one section gives a construction.
-
-    Parameters
-    ----------
-    where : str
-        Section, for messages.
-    separation : Separation
-    fault : KnownFault
-    bed : Profile
-        Hanging-wall horizon; its first point is the hanging-wall cut-off.
-    regional : Regional
-        Written against the footwall cut-off.
-    model : object
-        Kinematic model.
-    options : MarchOptions
-    """
-
-    where: str
-    separation: object
-    fault: object
-    bed: Profile
-    regional: object
-    model: object
-    options: MarchOptions
-
-    @property
-    def tan(self):
-        """Tangent of the shear angle: u = x - z tan."""
-        return float(np.tan(np.radians(self.model.shear_angle)))
-
-    @property
-    def oblique_heave(self):
-        """Displacement of the columns along the frame's axis at the cut-offs."""
-        separation = self.separation
-        return float(self.model.displacement(separation.heave, separation.throw))
-
-    def regional_at(self, u):
-        """Give R~(u) = (R(0) + s u)/(1 - s tan a) of the straight regional."""
-        line = self.regional
-        at_zero = line.z0 - line.slope * line.x0
-        return (at_zero + line.slope * u) / (1.0 - line.slope * self.tan)
-
-
-@dataclass(frozen=True, eq=False)
-class Solution:
-    """One march: everything at its nodes, against u along the shear lines.
-
-    Parameters
-    ----------
-    u, z : ndarray (n,)
-        Nodes from the footwall cut-off on, and the fault there.
-    origin_index, origin_fraction : ndarray (n,)
-        Where the column of each node came from, as for `march`.
-    bed_z, regional_z : ndarray (n,)
-        The bed at the node, the regional at its origin.
-    bed : Profile
-        The bed against u, its sigma along the shear lines.
-    start : int
-        Nodes on the known or assumed piece.
-    """
-
-    u: np.ndarray
-    z: np.ndarray
-    origin_index: np.ndarray
-    origin_fraction: np.ndarray
-    bed_z: np.ndarray
-    regional_z: np.ndarray
-    bed: Profile
-    start: int
-
-    @property
-    def strip(self):
-        """Number of the strip of each node, 0 on the start piece."""
-        near = self.origin_index + (self.origin_fraction > 0)
-        steps = np.ones(len(self.u))
-        start = np.zeros(self.start)
-        return march(near, np.zeros(len(near)), start, steps).astype(int)
-
-
-def _bed_in_frame(problem):
-    """Write the bed against u; noise that breaks its order is averaged."""
-    bed, angle, tan = problem.bed, problem.model.shear_angle, problem.tan
-    u = to_shear_frame(bed.x, bed.z, angle)
-    u, z, sigma, x, count = pool_to_increasing(u, bed.z, bed.sigma, bed.x, least=1e-9)
-    if count.max() > 1:
-        _check_pooling(problem, x, count)
-    slope = np.gradient(z, x) if len(x) > 1 else np.zeros(1)
-    # a vertical error of the pick is longer along an inclined shear line
-    factor = np.maximum(np.abs(1.0 - slope * tan), 0.2)
-    return Profile(u, z, sigma / factor)
-
-
-def _check_pooling(problem, x, count):
-    """Refuse a bed whose order breaks over more than noise could."""
-    # how far in x the averaging reaches: noise folds little, a steep bed a lot
-    last = np.cumsum(count).astype(int) - 1
-    first = last - count.astype(int) + 1
-    width = problem.bed.x[last] - problem.bed.x[first]
-    i = int(np.argmax(width))
-    if width[i] > 0.5 * problem.oblique_heave:
-        raise ConstructionError(
-            "shear-parallel-to-bed",
-            f"near x = {x[i]:.0f} the bed dips more steeply than the shear planes of "
-            f"{problem.model.shear_angle:g} degrees allow.",
-            problem.where,
-            "Use a smaller shear angle, or check the picks there.",
-        )
 
 
 def _check_fault_in_frame(problem):
@@ -274,59 +150,17 @@ def _check_fault_in_frame(problem):
         )
 
 
-def _start_piece(problem, u):
-    """F~ on the nodes between the cut-offs, through both of them exactly."""
-    fault = problem.fault
-    foot, hang = problem.separation.footwall, problem.separation.hanging_wall
-    inner = fault.x[(fault.x > foot.x) & (fault.x < hang.x)]
-    x = np.r_[foot.x, inner, hang.x]
-    z = np.r_[foot.z, fault.z_at(inner), hang.z]
-    return np.interp(u, x - z * problem.tan, z)
-
-
-def solve(problem):
-    """March one section.
-
-    The nodes stand one oblique heave over `samples_per_strip` apart, exactly, from
-    the footwall cut-off to the last pick.
-
-    Parameters
-    ----------
-    problem : Problem
-
-    Returns
-    -------
-    Solution
-    """
-    foot, hang = problem.separation.footwall, problem.separation.hanging_wall
-    bed = _bed_in_frame(problem)
-    m = problem.options.samples_per_strip
-    u0 = foot.x - foot.z * problem.tan
-    step = (hang.x - hang.z * problem.tan - u0) / m
-    count = int(np.floor((bed.x[-1] - u0) / step + 1e-6)) + 1
-    u = u0 + step * np.arange(max(count, m + 1))
-    origin = problem.model.origin(u, bed, problem)
-    at = np.maximum((origin - u0) / step, 0.0)
-    index = np.floor(at + 1e-6).astype(int)
-    fraction = np.where(np.abs(at - index) < 1e-6, 0.0, at - index)
-    bed_z = np.interp(u, bed.x, bed.z)
-    regional_z = problem.regional_at(origin)
-    start = _start_piece(problem, u[: m + 1])
-    z = march(index, fraction, start, bed_z - regional_z)
-    return Solution(u, z, index, fraction, bed_z, regional_z, bed, m + 1)
-
-
-def bed_from(cutoff, bed):
-    """Give the bed from its hanging-wall cut-off on, picks inboard left out."""
-    beyond = bed.x > cutoff.x + 1e-6
-    return Profile(
-        np.r_[cutoff.x, bed.x[beyond]],
-        np.r_[cutoff.z, bed.z[beyond]],
-        np.r_[cutoff.sigma_z, bed.sigma[beyond]],
-    )
-
-
-def predict_fault(section, separation, fault, bed, regional, model, options=None):
+def predict_fault(
+    section,
+    separation,
+    fault,
+    bed,
+    regional,
+    model,
+    options=None,
+    solver="march",
+    others=(),
+):
     """Predict the fault from the rollover of one horizon by the march.
 
     Assumes plane strain along transport, a rigid footwall and columns that slide
@@ -347,6 +181,10 @@ def predict_fault(section, separation, fault, bed, regional, model, options=None
         Through the footwall cut-off.
     model : ConstantHeave
     options : MarchOptions, optional
+    solver : str
+        ``march`` or ``fit``.
+    others : sequence of OtherHorizon
+        Further horizons, which only the fit uses.
 
     Returns
     -------
@@ -370,10 +208,11 @@ def predict_fault(section, separation, fault, bed, regional, model, options=None
         regional,
         model,
         options or MarchOptions(),
+        tuple(others),
     )
     _check_separation(problem)
     _check_fault_in_frame(problem)
-    solution = solve(problem)
+    solution = SOLVERS[solver](problem)
     if len(solution.u) <= solution.start:
         raise ConstructionError(
             "bed-too-short",
@@ -382,15 +221,14 @@ def predict_fault(section, separation, fault, bed, regional, model, options=None
             problem.where,
             "Extend the section or the picks into the hanging wall.",
         )
-    x = from_shear_frame(solution.u, solution.z, model.shear_angle)
-    _check_single_valued(x, problem.where)
-    trace = _trace(problem, solution, x)
+    x, z = _unfolded(problem, solution)
+    trace = _trace(problem, solution, x, z)
     detachment = _detachment(problem, solution)
     return Prediction(
         section.section_id,
         separation.horizon,
         model,
-        "march",
+        solver,
         separation,
         regional,
         problem.oblique_heave,
@@ -399,6 +237,7 @@ def predict_fault(section, separation, fault, bed, regional, model, options=None
         detachment,
         float(solution.z[-1]),
         tuple(march_doubts(problem, solution, trace, detachment)),
+        solution.detail,
     )
 
 
@@ -431,37 +270,54 @@ def _check_separation(problem):
         )
 
 
-def _check_single_valued(x, where):
-    """Refuse a fault that folds back on itself."""
-    back = np.diff(x) <= 0
-    if back.any():
+def _unfolded(problem, solution):
+    """Give x and z of the fault where pick noise folds it back: neighbours averaged.
+
+    Raises
+    ------
+    ConstructionError
+        If it turns back over more than half a strip, which noise does not do.
+    """
+    angle, where = problem.model.shear_angle, problem.where
+    x = from_shear_frame(solution.u, solution.z, angle)
+    if np.all(np.diff(x) > 0):
+        return x, solution.z
+    back = np.maximum.accumulate(x) - x
+    if back.max() > 0.5 * problem.oblique_heave:
         raise ConstructionError(
             "fault-not-single-valued",
             f"near x = {x[int(np.argmax(back))]:.0f} the predicted fault turns back on "
             "itself.",
             where,
-            "Check the picks there; noise closer than a strip can do it.",
+            "Check the picks there, or use a smaller shear angle.",
         )
+    # averaged in place, so that every node keeps its strip and its sigma
+    order = np.sort(x)
+    least = 1e-6 * problem.oblique_heave
+    even = order + least * np.arange(len(x))
+    return even, np.interp(even, *pool_to_increasing(x, solution.z)[:2])
 
 
-def _trace(problem, solution, x):
+def _trace(problem, solution, x, z):
     """Join the known fault above the footwall cut-off to the marched part."""
     fault = problem.fault
     above = fault.x < problem.separation.footwall.x - 1e-6
     n = int(above.sum())
-    full_x, full_z = np.r_[fault.x[above], x], np.r_[fault.z[above], solution.z]
+    full_x, full_z = np.r_[fault.x[above], x], np.r_[fault.z[above], z]
     strip = np.r_[np.zeros(n, int), solution.strip]
     state = np.full(len(full_x), "predicted", dtype=object)
     first = strip == 0
     state[first] = np.where(fault.is_known(full_x[first]), "known", "assumed")
     state[:n] = "known"
+    if solution.reach is not None:
+        state[n:][~solution.reach & ~first[n:]] = "out of reach"
     return FaultTrace(
         full_x,
         full_z,
         np.degrees(np.arctan(-np.gradient(full_z, full_x))),
         strip,
         state,
-        np.r_[np.full(n, fault.sigma), march_sigma(problem, solution)],
+        np.r_[np.full(n, fault.sigma), solution_sigma(problem, solution)],
     )
 
 

@@ -52,7 +52,7 @@ def _update_features(total, data):
 
 
 def _update_picks(total, table, sampled):
-    names = ("x", "z", "sigma_z", "dip", "kind", "name", "wall", "used")
+    names = ("x", "z", "sigma_z", "correlation", "dip", "kind", "name", "wall", "used")
     if sampled is not None:
         table = table.select(np.isin(table.source.astype(str), sampled))
         names = ("x", "z")

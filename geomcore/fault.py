@@ -1,6 +1,6 @@
 """The fault as far as it is observed, carried on straight beyond."""
 
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 
 import numpy as np
 
@@ -8,6 +8,10 @@ from .errors import Doubt, PicksError
 from .profile import pool_to_increasing
 
 __all__ = ["KnownFault", "known_fault"]
+
+#: A gap this many times the usual spacing parts the known piece from deep ties
+#: (common practice, no source).
+TIE_GAP = 5.0
 
 
 @dataclass(frozen=True, eq=False)
@@ -24,6 +28,9 @@ class KnownFault:
         dz/dx (negative) with which it is carried on above and below them.
     below_from : str
         What `slope_below` comes from, in words.
+    tie_x, tie_z, tie_sigma : ndarray (k,)
+        Deep ties: points on the fault far beyond the known piece. The march does
+        not use them; the fit does.
     """
 
     x: np.ndarray
@@ -32,6 +39,9 @@ class KnownFault:
     slope_above: float
     slope_below: float
     below_from: str
+    tie_x: np.ndarray = field(default_factory=lambda: np.empty(0))
+    tie_z: np.ndarray = field(default_factory=lambda: np.empty(0))
+    tie_sigma: np.ndarray = field(default_factory=lambda: np.empty(0))
 
     def z_at(self, x):
         """Give the fault elevation at x, carried on straight beyond the points."""
@@ -124,7 +134,11 @@ def known_fault(picks, cutoffs=()):
         )
     order = np.lexsort((-z, x))
     x, z, dip = x[order], z[order], dip[order]
+    error = np.r_[fault.sigma_z, [c.sigma_z for c in cutoffs]][order]
     doubts = _wrong_way(x, z, where)
+    n = _known_piece(x)
+    ties = {"tie_x": x[n:], "tie_z": z[n:], "tie_sigma": error[n:]}
+    x, z, dip = x[:n], z[:n], dip[:n]
     px, minus_z, _ = pool_to_increasing(x, -z, least=1e-6)
     minus_z, px, _ = pool_to_increasing(minus_z, px, least=1e-6)
     if len(px) < len(np.unique(x)):
@@ -146,7 +160,21 @@ def known_fault(picks, cutoffs=()):
             "Give the dip of the fault trace, fault picks at depth, or cut-offs.",
         )
     sigma = float(np.median(fault.sigma_z)) if len(fault) else 0.0
-    return KnownFault(px, pz, sigma, above, below, how), doubts
+    return KnownFault(px, pz, sigma, above, below, how, **ties), doubts
+
+
+def _known_piece(x):
+    """Count the fault picks that make one piece; those far beyond are deep ties.
+
+    The piece ends where the next pick stands off by more than `TIE_GAP` times the
+    median spacing before it.
+    """
+    gaps = np.diff(x)
+    for i in range(2, len(gaps)):
+        usual = np.median(gaps[:i][gaps[:i] > 0]) if (gaps[:i] > 0).any() else np.inf
+        if gaps[i] > TIE_GAP * usual:
+            return i + 1
+    return len(x)
 
 
 def _wrong_way(x, z, where):

@@ -37,6 +37,7 @@ _COLUMNS = {
     "z": float,
     "off_section": float,
     "sigma_z": float,
+    "correlation": float,
     "dip": float,
     "kind": object,
     "name": object,
@@ -68,6 +69,9 @@ class Picks:
         of transport.
     sigma_z : ndarray (n,)
         One standard deviation of z.
+    correlation : ndarray (n,)
+        Length over which the errors of neighbouring picks of the source go
+        together; 0 where they are independent.
     dip : ndarray (n,)
         Apparent dip along transport in degrees, positive down towards the hanging
         wall; NaN where none is given.
@@ -87,6 +91,7 @@ class Picks:
     z: np.ndarray
     off_section: np.ndarray
     sigma_z: np.ndarray
+    correlation: np.ndarray
     dip: np.ndarray
     kind: np.ndarray
     name: np.ndarray
@@ -142,6 +147,7 @@ class Picks:
             "distance": np.asarray(x, dtype=float),
             "off_section": 0.0,
             "sigma_z": 0.0,
+            "correlation": 0.0,
             "dip": np.nan,
             "kind": "horizon",
             "name": "",
@@ -540,6 +546,7 @@ def pull_source(prepared, frame, options):
         distance=frame.distance_at(x),
         off_section=off,
         sigma_z=_sigma(prepared),
+        correlation=declaration.correlation_length,
         dip=np.nan if no_part else _part_dips(prepared, frame, part, xy, options),
         kind=_KIND_OF_ROLE[declaration.role],
         name=names,

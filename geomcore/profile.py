@@ -1,6 +1,7 @@
 """Single-valued curves of a section: horizons and the straight regional."""
 
 from dataclasses import dataclass
+from typing import Optional
 
 import numpy as np
 
@@ -58,15 +59,21 @@ class Profile:
     x, z : ndarray (n,)
         Points, x strictly growing.
     sigma : ndarray (n,)
-        One standard deviation of z, errors of different points independent.
+        One standard deviation of z.
+    correlation : ndarray (n,), optional
+        Length over which the errors of neighbouring points go together, as
+        exp(-distance/length); 0 where they are independent.
     """
 
     x: np.ndarray
     z: np.ndarray
     sigma: np.ndarray
+    correlation: Optional[np.ndarray] = None
 
     def __post_init__(self):
-        for name in ("x", "z", "sigma"):
+        if self.correlation is None:
+            object.__setattr__(self, "correlation", np.zeros(len(self.x)))
+        for name in ("x", "z", "sigma", "correlation"):
             value = np.array(getattr(self, name), dtype=float)
             value.flags.writeable = False
             object.__setattr__(self, name, value)
@@ -77,6 +84,15 @@ class Profile:
 
     def __len__(self):
         return len(self.x)
+
+    def covariance(self):
+        """Give the covariance (n, n) of the errors of its points."""
+        length = np.minimum.outer(self.correlation, self.correlation)
+        apart = np.abs(np.subtract.outer(self.x, self.x))
+        with np.errstate(divide="ignore", invalid="ignore"):
+            together = np.where(length > 0, np.exp(-apart / length), 0.0)
+        np.fill_diagonal(together, 1.0)
+        return together * np.outer(self.sigma, self.sigma)
 
 
 def profile_from_picks(picks):
@@ -103,7 +119,10 @@ def profile_from_picks(picks):
     weight = 1.0 / np.maximum(sigma, 1e-6) ** 2
     total = np.add.reduceat(weight, at)
     return Profile(
-        x[at], np.add.reduceat(weight * z, at) / total, np.minimum.reduceat(sigma, at)
+        x[at],
+        np.add.reduceat(weight * z, at) / total,
+        np.minimum.reduceat(sigma, at),
+        np.maximum.reduceat(picks.correlation[order], at),
     )
 
 
@@ -166,9 +185,14 @@ class Regional:
 
 
 def fit_covariance(normal, residual, free, sigma):
-    """Parameter covariance, widened where the residuals exceed the stated sigma."""
+    """Give the covariance of fitted parameters.
+
+    It is widened where the residuals exceed the stated sigma by more than chance
+    would (mean square beyond 1 + 2 sqrt(2/free)).
+    """
     excess = (residual**2 / sigma**2).sum() / free if free > 0 else 1.0
-    return np.linalg.inv(normal) * max(1.0, excess)
+    chance = 1.0 + 2.0 * np.sqrt(2.0 / max(free, 1))
+    return np.linalg.inv(normal) * (excess if excess > chance else 1.0)
 
 
 def fit_line(x, z, sigma, slope=None, through=None):

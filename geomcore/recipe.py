@@ -27,7 +27,7 @@ __all__ = [
 
 FORMAT = "heaveline-study"
 VERSION = 1
-SOLVERS = ("march",)
+SOLVERS = ("march", "fit")
 
 
 @dataclass(frozen=True)
@@ -154,8 +154,15 @@ class ConstructionSpec:
     shear_angle_sigma : float
         One standard deviation of it, for the stated sigma.
     solver : str
-        ``march``.
+        One of `SOLVERS`.
     samples_per_strip : int
+    fit_horizons : tuple of str
+        Further horizons the fit uses besides, each with its own cut-offs and
+        regional.
+    robust : bool
+        The fit gives picks that miss by more than twice their sigma less weight.
+    detachment_z, detachment_sigma : float, optional
+        Detachment level known from elsewhere; a soft constraint of the fit.
     regional : RegionalSpec
     further_horizons : tuple of HorizonSpec
     """
@@ -166,6 +173,10 @@ class ConstructionSpec:
     shear_angle_sigma: float = 0.0
     solver: str = "march"
     samples_per_strip: int = 40
+    fit_horizons: tuple = ()
+    robust: bool = False
+    detachment_z: Optional[float] = None
+    detachment_sigma: float = 50.0
     regional: RegionalSpec = field(default_factory=RegionalSpec)
     further_horizons: tuple = ()
 
@@ -334,6 +345,7 @@ def _read_construction(document):
             given["regional"] = read_object(
                 RegionalSpec, document["regional"], "construction.regional"
             )
+        given["fit_horizons"] = tuple(document.get("fit_horizons", ()))
         given["further_horizons"] = tuple(
             read_object(HorizonSpec, h, "construction.further_horizons")
             for h in document.get("further_horizons", ())

@@ -174,7 +174,7 @@ def _local_fit(x, z, sigma, end, fault):
             weighted.T @ weighted, residual, len(x) - degree - 1, sigma
         )
         if degree == 2:
-            gap = abs(float(fault.x_at(z.mean())) - end)
+            gap = abs(float(fault.x_at(z[np.argmin(np.abs(d))])) - end)
             if abs(coefficient[2]) < 3 * np.sqrt(cov[2, 2]) or gap > scale:
                 break
         best = coefficient, cov, degree

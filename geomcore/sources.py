@@ -92,6 +92,9 @@ class SourceDeclaration:
         Where the value comes from.
     sigma : float
         One standard deviation of the value, in `unit`.
+    correlation_length : float
+        Distance along the section, in the study's length unit, over which errors of
+        neighbouring picks go together (contours, gridded surfaces); 0 if independent.
     wall : str, optional
         ``footwall`` or ``hanging wall`` if the whole layer lies in one of them.
     uri : str
@@ -126,6 +129,7 @@ class SourceDeclaration:
     domain: str = "depth"
     z: ZDeclaration = field(default_factory=ZDeclaration)
     sigma: float = 0.0
+    correlation_length: float = 0.0
     datum_elevation: float = 0.0
     time_way: Optional[str] = None
     wall: Optional[str] = None
@@ -166,6 +170,11 @@ class SourceDeclaration:
             )
         if not np.isfinite(self.sigma) or self.sigma < 0:
             self._refuse(f"sigma is {self.sigma}.", "Give a number of 0 or more.")
+        if not np.isfinite(self.correlation_length) or self.correlation_length < 0:
+            self._refuse(
+                f"correlation_length is {self.correlation_length}.",
+                "Give a number of 0 or more.",
+            )
         object.__setattr__(self, "null_values", tuple(self.null_values))
 
     def _one_of(self, what, allowed):

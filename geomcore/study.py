@@ -23,6 +23,7 @@ from .fault import known_fault
 from .forward import predict_horizon
 from .kinematics import model_named
 from .picks import Picks, PullOptions, SourceCount, prepare_source, pull_source
+from .problem import OtherHorizon
 from .profile import (
     Profile,
     fit_line,
@@ -614,15 +615,55 @@ def _predict(study, frame, picks, fault, given, options):
     found = regional_and_separation(
         picks, fault, spec.horizon, model, spec.regional, given, options
     )
-    bed = profile_from_picks(picks.of("horizon", spec.horizon, "hanging wall"))
-    march_options = MarchOptions(spec.samples_per_strip, spec.shear_angle_sigma)
+    march_options = MarchOptions(
+        spec.samples_per_strip,
+        spec.shear_angle_sigma,
+        spec.robust,
+        spec.detachment_z,
+        spec.detachment_sigma,
+    )
+    others, doubts = _fit_horizons(spec, picks, fault, model, options)
     prediction = predict_fault(
-        frame, found.separation, fault, bed, found.regional, model, march_options
+        frame,
+        found.separation,
+        fault,
+        _hanging_wall(picks, spec.horizon),
+        found.regional,
+        model,
+        march_options,
+        spec.solver,
+        others,
     )
-    return (
-        replace(prediction, doubts=(*found.doubts, *prediction.doubts)),
-        found.result,
-    )
+    doubts = (*found.doubts, *doubts, *prediction.doubts)
+    return replace(prediction, doubts=doubts), found.result
+
+
+def _hanging_wall(picks, horizon):
+    return profile_from_picks(picks.of("horizon", horizon, "hanging wall"))
+
+
+def _fit_horizons(spec, picks, fault, model, options):
+    """Further horizons for the fit; one that cannot be used is left out, with a doubt.
+
+    The march uses one horizon only.
+    """
+    others, doubts = [], []
+    for name in spec.fit_horizons if spec.solver == "fit" else ():
+        try:
+            given = given_cutoffs(picks, name, options)
+            own = replace(spec.regional, z=None)  # its level is that of another horizon
+            found = regional_and_separation(
+                picks, fault, name, model, own, given, options
+            )
+        except GeomcoreError as error:
+            text = f"horizon '{name}' is not in the fit: {error.reason}"
+            doubts.append(
+                Doubt("horizon-not-fitted", text, f"section {picks.section_id}")
+            )
+            continue
+        bed = _hanging_wall(picks, name)
+        others.append(OtherHorizon(name, found.separation, bed, found.regional))
+    return tuple(others), doubts
 
 
 def _other_separations(picks, fault, options, done):

@@ -1,0 +1,244 @@
+"""What one section gives a solver, and what a solver gives back."""
+
+from dataclasses import dataclass
+from typing import Optional
+
+import numpy as np
+
+from .errors import ConstructionError
+from .kinematics import to_shear_frame
+from .profile import Profile, pool_to_increasing
+from .stepping import march
+
+__all__ = [
+    "MarchOptions",
+    "OtherHorizon",
+    "Problem",
+    "Solution",
+    "bed_from",
+    "bed_in_frame",
+    "solve_march",
+    "start_piece",
+]
+
+
+@dataclass(frozen=True)
+class MarchOptions:
+    """How a section is solved.
+
+    Parameters
+    ----------
+    samples_per_strip : int
+        Nodes in one oblique heave; the step is the heave over it, exactly.
+    shear_angle_sigma : float
+        One standard deviation of the shear angle in degrees, for the stated sigma.
+    robust : bool
+        The fit gives picks that miss by more than twice their sigma less weight.
+    detachment_z, detachment_sigma : float
+        Detachment level known from elsewhere and its sigma; the fit takes it as a
+        soft constraint.
+    """
+
+    samples_per_strip: int = 40
+    shear_angle_sigma: float = 0.0
+    robust: bool = False
+    detachment_z: Optional[float] = None
+    detachment_sigma: float = 50.0
+
+
+@dataclass(frozen=True, eq=False)
+class OtherHorizon:
+    """A further horizon for the fit, with its own cut-offs and regional.
+
+    Parameters
+    ----------
+    name : str
+    separation : Separation
+    bed : Profile
+        In the hanging wall.
+    regional : Regional
+    """
+
+    name: str
+    separation: object
+    bed: Profile
+    regional: object
+
+
+@dataclass(frozen=True, eq=False)
+class Problem:
+    """What one section gives a construction.
+
+    Parameters
+    ----------
+    where : str
+        Section, for messages.
+    separation : Separation
+    fault : KnownFault
+    bed : Profile
+        Hanging-wall horizon; its first point is the hanging-wall cut-off.
+    regional : Regional
+        Written against the footwall cut-off.
+    model : object
+        Kinematic model.
+    options : MarchOptions
+    others : tuple of OtherHorizon
+        Further horizons the fit uses besides.
+    """
+
+    where: str
+    separation: object
+    fault: object
+    bed: Profile
+    regional: object
+    model: object
+    options: MarchOptions
+    others: tuple = ()
+
+    @property
+    def tan(self):
+        """Tangent of the shear angle: u = x - z tan."""
+        return float(np.tan(np.radians(self.model.shear_angle)))
+
+    @property
+    def oblique_heave(self):
+        """Displacement of the columns along the frame's axis at the cut-offs."""
+        separation = self.separation
+        return float(self.model.displacement(separation.heave, separation.throw))
+
+    def regional_at(self, u):
+        """Give R~(u) = (R(0) + s u)/(1 - s tan a) of the straight regional."""
+        line = self.regional
+        at_zero = line.z0 - line.slope * line.x0
+        return (at_zero + line.slope * u) / (1.0 - line.slope * self.tan)
+
+
+@dataclass(frozen=True, eq=False)
+class Solution:
+    """One march: everything at its nodes, against u along the shear lines.
+
+    Parameters
+    ----------
+    u, z : ndarray (n,)
+        Nodes from the footwall cut-off on, and the fault there.
+    origin_index, origin_fraction : ndarray (n,)
+        Where the column of each node came from, as for `march`.
+    bed_z, regional_z : ndarray (n,)
+        The bed at the node, the regional at its origin.
+    bed : Profile
+        The bed against u, its sigma along the shear lines.
+    start : int
+        Nodes on the known or assumed piece.
+    sigma : ndarray (n,), optional
+        One standard deviation of z along the shear lines from the picks alone,
+        where the solver gives it.
+    reach : ndarray (n,) of bool, optional
+        False where a node has no data near it.
+    detail : object, optional
+        What else the solver has to tell (`FitDetail`).
+    """
+
+    u: np.ndarray
+    z: np.ndarray
+    origin_index: np.ndarray
+    origin_fraction: np.ndarray
+    bed_z: np.ndarray
+    regional_z: np.ndarray
+    bed: Profile
+    start: int
+    sigma: object = None
+    reach: object = None
+    detail: object = None
+
+    @property
+    def strip(self):
+        """Number of the strip of each node, 0 on the start piece."""
+        near = self.origin_index + (self.origin_fraction > 0)
+        steps = np.ones(len(self.u))
+        start = np.zeros(self.start)
+        return march(near, np.zeros(len(near)), start, steps).astype(int)
+
+
+def bed_in_frame(problem):
+    """Write the bed against u; noise that breaks its order is averaged."""
+    bed, angle, tan = problem.bed, problem.model.shear_angle, problem.tan
+    u = to_shear_frame(bed.x, bed.z, angle)
+    u, z, sigma, x, length, count = pool_to_increasing(
+        u, bed.z, bed.sigma, bed.x, bed.correlation, least=1e-9
+    )
+    if count.max() > 1:
+        _check_pooling(problem, x, count)
+    slope = np.gradient(z, x) if len(x) > 1 else np.zeros(1)
+    # a vertical error of the pick is longer along an inclined shear line
+    factor = np.maximum(np.abs(1.0 - slope * tan), 0.2)
+    return Profile(u, z, sigma / factor, length)
+
+
+def _check_pooling(problem, x, count):
+    """Refuse a bed whose order breaks over more than noise could."""
+    # how far in x the averaging reaches: noise folds little, a steep bed a lot
+    last = np.cumsum(count).astype(int) - 1
+    first = last - count.astype(int) + 1
+    width = problem.bed.x[last] - problem.bed.x[first]
+    i = int(np.argmax(width))
+    if width[i] > 0.5 * problem.oblique_heave:
+        raise ConstructionError(
+            "shear-parallel-to-bed",
+            f"near x = {x[i]:.0f} the bed dips more steeply than the shear planes of "
+            f"{problem.model.shear_angle:g} degrees allow.",
+            problem.where,
+            "Use a smaller shear angle, or check the picks there.",
+        )
+
+
+def start_piece(problem, u):
+    """F~ on the nodes between the cut-offs, through both of them exactly."""
+    fault = problem.fault
+    foot, hang = problem.separation.footwall, problem.separation.hanging_wall
+    inner = fault.x[(fault.x > foot.x) & (fault.x < hang.x)]
+    x = np.r_[foot.x, inner, hang.x]
+    z = np.r_[foot.z, fault.z_at(inner), hang.z]
+    return np.interp(u, x - z * problem.tan, z)
+
+
+def solve_march(problem):
+    """March one section.
+
+    The nodes stand one oblique heave over `samples_per_strip` apart, exactly, from
+    the footwall cut-off to the last pick.
+
+    Parameters
+    ----------
+    problem : Problem
+
+    Returns
+    -------
+    Solution
+    """
+    foot, hang = problem.separation.footwall, problem.separation.hanging_wall
+    bed = bed_in_frame(problem)
+    m = problem.options.samples_per_strip
+    u0 = foot.x - foot.z * problem.tan
+    step = (hang.x - hang.z * problem.tan - u0) / m
+    count = int(np.floor((bed.x[-1] - u0) / step + 1e-6)) + 1
+    u = u0 + step * np.arange(max(count, m + 1))
+    origin = problem.model.origin(u, bed, problem)
+    at = np.maximum((origin - u0) / step, 0.0)
+    index = np.floor(at + 1e-6).astype(int)
+    fraction = np.where(np.abs(at - index) < 1e-6, 0.0, at - index)
+    bed_z = np.interp(u, bed.x, bed.z)
+    regional_z = problem.regional_at(origin)
+    start = start_piece(problem, u[: m + 1])
+    z = march(index, fraction, start, bed_z - regional_z)
+    return Solution(u, z, index, fraction, bed_z, regional_z, bed, m + 1)
+
+
+def bed_from(cutoff, bed):
+    """Give the bed from its hanging-wall cut-off on, picks inboard left out."""
+    beyond = bed.x > cutoff.x + 1e-6
+    return Profile(
+        np.r_[cutoff.x, bed.x[beyond]],
+        np.r_[cutoff.z, bed.z[beyond]],
+        np.r_[cutoff.sigma_z, bed.sigma[beyond]],
+        np.r_[0.0, bed.correlation[beyond]],
+    )
