@@ -16,11 +16,11 @@ def digest(study, frames, picks, sources=None):
 
     Arrays enter as little-endian float64; a grid enters by its samples on the
     sections; without sources all columns of the picks enter. The study enters
-    without its outputs, so that the place of a file does not change the name.
+    without its outputs and without the places of its layers, so that moving a file
+    does not change the name.
     """
     total = hashlib.sha256()
-    document = study.to_dict()
-    document.pop("outputs", None)
+    document = _without_places(study.to_dict())
     text = json.dumps(document, sort_keys=True, ensure_ascii=True)
     total.update(f"{__version__}\n{text}\n".encode())
     for frame in frames:
@@ -35,6 +35,15 @@ def digest(study, frames, picks, sources=None):
         for table in (picks[section_id].depth, picks[section_id].time):
             _update_picks(total, table, sampled)
     return total.hexdigest()
+
+
+def _without_places(document):
+    """Leave out where layers and outputs are: what they hold enters by itself."""
+    document.pop("outputs", None)
+    for thing in (document.get("sections", {}), *document.get("sources", ())):
+        thing.pop("uri", None)
+        thing.get("z", {}).pop("uri", None)
+    return document
 
 
 def _sampled_sources(sources):
