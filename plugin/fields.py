@@ -7,7 +7,7 @@ projects rely on them. Add, never rename.
 from dataclasses import dataclass
 from typing import Optional, Tuple
 
-__all__ = ["LAYERS", "FieldSpec", "LayerSpec"]
+__all__ = ["LAYERS", "FieldSpec", "LayerSpec", "Table"]
 
 
 @dataclass(frozen=True)
@@ -282,12 +282,8 @@ _PREDICTED_FAULT_TRACES = LayerSpec(
             "Movement type",
             "CGI vocabulary of fault movement types.",
         ),
-        _text(
-            "length_unit", "Length unit", "Unit of lengths and z: m, ft or us-ft."
-        ),
-        _text(
-            "vertical_datum", "Vertical datum", "What elevations are counted from."
-        ),
+        _text("length_unit", "Length unit", "Unit of lengths and z: m, ft or us-ft."),
+        _text("vertical_datum", "Vertical datum", "What elevations are counted from."),
         _WARNINGS,
         _DIGEST,
         _TOOL,
@@ -506,3 +502,28 @@ LAYERS = {
         _RUNS,
     )
 }
+
+
+@dataclass(frozen=True, eq=False)
+class Table:
+    """Rows of one output layer.
+
+    Parameters
+    ----------
+    name : str
+        Key of `LAYERS`.
+    rows : list of tuple (coordinates, values)
+        Coordinates are None, (2,) or (3,) for a point, (n, 2) or (n, 3) for a line;
+        values a dict by field name. What is not given, None or NaN is written null.
+    """
+
+    name: str
+    rows: list
+
+    @property
+    def spec(self):
+        """The layer's declaration."""
+        return LAYERS[self.name]
+
+    def __len__(self):
+        return len(self.rows)

@@ -1,0 +1,336 @@
+"""Raster layers to surfaces that are sampled bilinearly between pixel centres.
+
+Local rasters are read through GDAL, because QGIS shows a rotated raster through a
+resampled, unrotated view; other providers (web coverage, databases) by their blocks.
+"""
+
+from dataclasses import dataclass
+from typing import Any, Callable
+
+import numpy as np
+from osgeo import gdal
+from qgis.core import (
+    Qgis,
+    QgsCoordinateTransform,
+    QgsCsException,
+    QgsGeometry,
+    QgsProviderRegistry,
+    QgsRectangle,
+)
+
+from ...geomcore.errors import SourceError
+from ...geomcore.sources import Grid
+from .opening import say
+from .wkb import line_wkb, parse_wkb
+
+__all__ = ["read_grid"]
+
+_BAND = 1
+#: Pixels in the longer side of one window read for a piece of a section: large
+#: enough for few calls, small enough not to read far beside an oblique section.
+_WINDOW = 256
+#: Pixels of slack, so that rounding loses no point on the outermost pixel centres.
+_SLACK = 1e-6
+
+
+@dataclass(frozen=True, eq=False)
+class _Raster:
+    """A band that can be read by windows, and the way from map to pixel.
+
+    Parameters
+    ----------
+    read : callable
+        ``read(column, row, width, height)`` gives float values (height, width), NaN
+        where there are no data.
+    shape : tuple (columns, rows)
+    geotransform : tuple of 6 float
+        As GDAL counts it: from pixel corners.
+    block : tuple (columns, rows)
+        How the values are stored; whole blocks are read at once.
+    """
+
+    read: Callable[[int, int, int, int], np.ndarray]
+    shape: tuple
+    geotransform: tuple
+    keep_open: Any = None
+
+    def to_pixel(self, xy):
+        """Give columns and rows counted from the first pixel's centre."""
+        g = self.geotransform
+        det = g[1] * g[5] - g[2] * g[4]
+        dx, dy = xy[:, 0] - g[0], xy[:, 1] - g[3]
+        column = (g[5] * dx - g[2] * dy) / det - 0.5
+        row = (g[1] * dy - g[4] * dx) / det - 0.5
+        return column, row
+
+    def to_map(self, column, row):
+        """Give the map coordinates of pixel centres (n, 2)."""
+        g = self.geotransform
+        c, r = np.asarray(column) + 0.5, np.asarray(row) + 0.5
+        return np.column_stack([g[0] + c * g[1] + r * g[2], g[3] + c * g[4] + r * g[5]])
+
+
+def read_grid(layer, crs, transform_context, feedback=None):
+    """Make a raster layer a surface in the study's CRS.
+
+    Parameters
+    ----------
+    layer : QgsRasterLayer
+        Its first band is read.
+    crs : QgsCoordinateReferenceSystem
+        Of the study.
+    transform_context : QgsCoordinateTransformContext
+    feedback : QgsFeedback, optional
+
+    Returns
+    -------
+    Grid
+        Sampled bilinearly between pixel centres; NaN outside them and where one of
+        the four pixels that count has no data.
+
+    Raises
+    ------
+    SourceError
+        If the band cannot be read, or is a single row or column.
+    """
+    raster = _open_raster(layer)
+    if min(raster.shape) < 2:
+        _refuse(layer, "it has a single row or column of pixels.", "Use a larger one.")
+    transform = _transform(layer, crs, transform_context, feedback)
+    place = _bulk_transform(transform, layer)
+
+    def sample(xy):
+        return _sample(raster, place(np.asarray(xy, dtype=float).reshape(-1, 2)))
+
+    return Grid(sample, _cell(raster, transform, layer))
+
+
+def _refuse(layer, reason, remedy):
+    raise SourceError("bad-raster", reason, f"raster '{layer.name()}'", remedy)
+
+
+def _transform(layer, crs, context, feedback):
+    """Transform from the study's CRS to the raster's, or None where none is needed."""
+    own = layer.crs()
+    if not own.isValid():
+        say(
+            feedback,
+            f"Raster '{layer.name()}' has no CRS; its coordinates are taken to be in "
+            f"the study's CRS ({crs.authid() or crs.description()}).",
+        )
+        return None
+    if own == crs:
+        return None
+    return QgsCoordinateTransform(crs, own, context)
+
+
+def _bulk_transform(transform, layer):
+    """Give a function that transforms (n, 2) coordinates at once."""
+    if transform is None:
+        return lambda xy: xy
+
+    def place(xy):
+        if len(xy) < 2:
+            return place(np.repeat(xy, 2, axis=0))[: len(xy)] if len(xy) else xy
+        geometry = QgsGeometry()
+        geometry.fromWkb(line_wkb(xy))
+        try:
+            geometry.transform(transform)
+        except QgsCsException as error:
+            _refuse(
+                layer,
+                f"the sections cannot be transformed to its CRS: {error}",
+                "Check the CRS of the raster and of the study.",
+            )
+        return parse_wkb([geometry.asWkb().data()]).xy
+
+    return place
+
+
+def _cell(raster, transform, layer):
+    """Smaller side of a cell in the middle of the raster, in the study's unit."""
+    column, row = raster.shape[0] / 2.0, raster.shape[1] / 2.0
+    at = raster.to_map([column, column + 1, column], [row, row, row + 1])
+    if transform is not None:
+        back = QgsCoordinateTransform(transform)
+        back = QgsCoordinateTransform(
+            transform.destinationCrs(), transform.sourceCrs(), transform.context()
+        )
+        at = _bulk_transform(back, layer)(at)
+    return float(np.hypot(*(at[1:] - at[0]).T).min())
+
+
+def _sample(raster, xy):
+    """Bilinear values at raster coordinates, read by windows along the way."""
+    column, row = raster.to_pixel(xy)
+    out = np.full(len(xy), np.nan)
+    last_column, last_row = raster.shape[0] - 1, raster.shape[1] - 1
+    with np.errstate(invalid="ignore"):
+        inside = (column >= -_SLACK) & (column <= last_column + _SLACK)
+        inside &= (row >= -_SLACK) & (row <= last_row + _SLACK)
+    at = np.flatnonzero(inside)
+    if not len(at):
+        return out
+    column = np.clip(column[at], 0, last_column)
+    row = np.clip(row[at], 0, last_row)
+    i = np.minimum(column.astype(np.int64), last_column - 1)
+    j = np.minimum(row.astype(np.int64), last_row - 1)
+    for run in _runs(i, j):
+        i0, j0 = int(i[run].min()), int(j[run].min())
+        width, height = int(i[run].max()) - i0 + 2, int(j[run].max()) - j0 + 2
+        window = raster.read(i0, j0, width, height)
+        out[at[run]] = _bilinear(window, column[run] - i0, row[run] - j0)
+    return out
+
+
+def _runs(i, j):
+    """Cut points into runs that stay within one window; any order of points works."""
+    reach = np.maximum(np.abs(np.diff(i)), np.abs(np.diff(j)))
+    number = np.concatenate([[0], np.cumsum(reach)]) // _WINDOW
+    edges = np.flatnonzero(np.diff(number)) + 1
+    edges = np.concatenate([[0], edges, [len(i)]])
+    return [slice(a, b) for a, b in zip(edges[:-1], edges[1:])]
+
+
+def _bilinear(window, column, row):
+    """Bilinear values inside a window; a pixel without weight may lack data."""
+    i = np.minimum(column.astype(np.int64), window.shape[1] - 2)
+    j = np.minimum(row.astype(np.int64), window.shape[0] - 2)
+    f, g = column - i, row - j
+    f = np.where(np.abs(f - np.round(f)) < _SLACK, np.round(f), f)
+    g = np.where(np.abs(g - np.round(g)) < _SLACK, np.round(g), g)
+    total = np.zeros(len(column))
+    for dj, di, weight in (
+        (0, 0, (1 - f) * (1 - g)),
+        (0, 1, f * (1 - g)),
+        (1, 0, (1 - f) * g),
+        (1, 1, f * g),
+    ):
+        value = window[j + dj, i + di]
+        total += np.where(weight > 0, weight * value, 0.0)
+    return total
+
+
+def _open_raster(layer):
+    """Open the band through GDAL where it can be, else through the provider."""
+    if layer.providerType() == "gdal":
+        dataset = _gdal_dataset(layer)
+        if dataset is not None:
+            return _of_gdal(dataset, layer)
+    return _of_provider(layer)
+
+
+def _gdal_dataset(layer):
+    """Open the layer's file; None where GDAL does not know it under this name."""
+    source = layer.source()
+    decoded = QgsProviderRegistry.instance().decodeUri("gdal", source)
+    names = [source]
+    if decoded.get("path") and not decoded.get("layerName"):
+        names.append(decoded["path"])
+    before = gdal.GetUseExceptions()
+    gdal.UseExceptions()
+    try:
+        for name in names:
+            try:
+                return gdal.OpenEx(name, gdal.OF_RASTER | gdal.OF_READONLY)
+            except RuntimeError:
+                continue
+    finally:
+        if not before:
+            gdal.DontUseExceptions()
+    return None
+
+
+def _of_gdal(dataset, layer):
+    band = dataset.GetRasterBand(_BAND)
+    if gdal.DataTypeIsComplex(band.DataType):
+        _refuse(layer, "its first band holds complex numbers.", "Use another raster.")
+    nodata = _nodata_values(layer, band.GetNoDataValue())
+    masked = band.GetMaskFlags() & (gdal.GMF_PER_DATASET | gdal.GMF_ALPHA)
+    mask = band.GetMaskBand() if masked else None
+    scale, offset = band.GetScale() or 1.0, band.GetOffset() or 0.0
+
+    def read(column, row, width, height):
+        raw = band.ReadAsArray(column, row, width, height)
+        if raw is None:
+            _refuse(
+                layer,
+                f"pixels at column {column}, row {row} cannot be read: "
+                f"{gdal.GetLastErrorMsg()}",
+                "Check the file.",
+            )
+        value = _known(raw, nodata)
+        if mask is not None:
+            value[mask.ReadAsArray(column, row, width, height) == 0] = np.nan
+        return value if (scale, offset) == (1.0, 0.0) else value * scale + offset
+
+    return _Raster(
+        read,
+        (dataset.RasterXSize, dataset.RasterYSize),
+        dataset.GetGeoTransform(),
+        dataset,
+    )
+
+
+def _nodata_values(layer, own):
+    """No-data values of the file, unless switched off, and those set in QGIS."""
+    provider = layer.dataProvider()
+    values = []
+    if own is not None and provider.useSourceNoDataValue(_BAND):
+        values.append((own, own))
+    for span in provider.userNoDataValues(_BAND):
+        values.append((span.min(), span.max()))
+    return values
+
+
+def _known(raw, nodata):
+    """Values as floats, NaN where they stand for 'no data'."""
+    value = raw.astype(np.float64)
+    for low, high in nodata:
+        if low != low:
+            continue  # NaN is unknown by itself
+        if raw.dtype == np.float32:
+            low, high = np.float32(low), np.float32(high)
+        value[(raw >= low) & (raw <= high)] = np.nan
+    return value
+
+
+def _of_provider(layer):
+    """Read through the data provider, whose blocks know scale and no-data values."""
+    provider = layer.dataProvider()
+    columns, rows = provider.xSize(), provider.ySize()
+    box = provider.extent()
+    if columns < 1 or rows < 1:
+        _refuse(layer, "its provider does not tell its pixels.", "Save it as a file.")
+    dx, dy = box.width() / columns, box.height() / rows
+    x0, y0 = box.xMinimum(), box.yMaximum()
+
+    def read(column, row, width, height):
+        window = QgsRectangle(
+            x0 + column * dx,
+            y0 - (row + height) * dy,
+            x0 + (column + width) * dx,
+            y0 - row * dy,
+        )
+        block = provider.block(_BAND, window, width, height)
+        if not block.isValid() or not block.convert(Qgis.DataType.Float64):
+            _refuse(
+                layer,
+                f"pixels at column {column}, row {row} cannot be read.",
+                "Check the connection, or save it as a file.",
+            )
+        return _of_block(block, width, height)
+
+    return _Raster(read, (columns, rows), (x0, dx, 0.0, y0, 0.0, -dy))
+
+
+def _of_block(block, width, height):
+    value = np.frombuffer(block.data().data(), dtype=np.float64).copy()
+    value = value.reshape(height, width)
+    if block.hasNoDataValue():
+        value[value == block.noDataValue()] = np.nan
+    elif block.hasNoData():
+        for j, i in np.ndindex(height, width):
+            if block.isNoData(j, i):
+                value[j, i] = np.nan
+    return value

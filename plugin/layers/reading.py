@@ -1,0 +1,516 @@
+"""Vector layers to flat arrays: declared sources, section lines."""
+
+import re
+from itertools import islice
+
+import numpy as np
+from qgis.core import (
+    NULL,
+    Qgis,
+    QgsFeatureRequest,
+    QgsGeometry,
+    QgsRasterLayer,
+    QgsRectangle,
+    QgsWkbTypes,
+)
+from qgis.PyQt.QtCore import QMetaType
+
+from ...geomcore.errors import GeomcoreError, SourceError
+from ...geomcore.section import parse_azimuth
+from ...geomcore.sources import Features
+from ...geomcore.study import SectionLine
+from .opening import open_layer, say
+from .wkb import UnknownGeometry, parse_wkb
+
+__all__ = ["read_section_lines", "read_source", "read_table"]
+
+_KINDS = {1: "point", 2: "line", 3: "polygon"}
+#: What a layer of each role may be; the core knows what to do with these.
+_ALLOWED = {
+    "horizon": ("point", "line", "raster"),
+    "fault trace": ("line", "point"),
+    "fault": ("point", "line", "raster"),
+    "cut-off": ("line", "polygon", "point"),
+}
+_NUMBER = re.compile(r"\s*[+-]?(\d+(\.\d*)?|\.\d+)([eE][+-]?\d+)?\s*")
+_NUMERIC = (
+    QMetaType.Type.Int,
+    QMetaType.Type.UInt,
+    QMetaType.Type.LongLong,
+    QMetaType.Type.ULongLong,
+    QMetaType.Type.Double,
+    QMetaType.Type.Float,
+    QMetaType.Type.Short,
+)
+#: Features between two looks at the cancel button.
+_BLOCK = 5000
+
+
+def read_source(
+    declaration, crs, base, transform_context, feedback=None, layer=None, near=None
+):
+    """Read what a source declares, in the study's CRS.
+
+    Parameters
+    ----------
+    declaration : SourceDeclaration
+    crs : QgsCoordinateReferenceSystem
+        Of the study.
+    base : pathlib.Path or None
+        Folder that relative sources are looked for from.
+    transform_context : QgsCoordinateTransformContext
+    feedback : QgsFeedback, optional
+        Warned, and asked for cancellation.
+    layer : QgsMapLayer or QgsProcessingFeatureSource, optional
+        The layer itself, where it is at hand; else opened from ``declaration.uri``.
+    near : list of (xmin, ymin, xmax, ymax), optional
+        Read only features near these boxes of the study's CRS: quicker for one or
+        few sections. Counts are then of what was read.
+
+    Returns
+    -------
+    Features or Grid
+
+    Raises
+    ------
+    SourceError
+        If there is no such layer or field, or the layer's geometry does not suit
+        its role.
+    """
+    if layer is None:
+        layer = open_layer(declaration.uri, base, declaration.layer or declaration.key)
+    if isinstance(layer, QgsRasterLayer):
+        from .grids import read_grid
+
+        _check_kind("raster", declaration, layer)
+        return read_grid(layer, crs, transform_context, feedback)
+    _check_geometry(declaration, layer)
+    wanted = _wanted_fields(declaration, layer)
+    table = read_table(
+        layer, list(wanted.values()), crs, transform_context, feedback, near
+    )
+    surface = _surface(declaration, crs, base, transform_context, feedback)
+    return _features(declaration, layer, wanted, table, surface, feedback)
+
+
+def layer_name(layer):
+    """Give the name of a map layer or of a Processing source."""
+    name = layer.sourceName if hasattr(layer, "sourceName") else layer.name
+    return name()
+
+
+def layer_crs(layer):
+    """Give the CRS of a map layer or of a Processing source."""
+    return (layer.sourceCrs if hasattr(layer, "sourceCrs") else layer.crs)()
+
+
+def _where(declaration, layer):
+    return f"source '{declaration.key}', layer '{layer_name(layer)}'"
+
+
+def _check_kind(kind, declaration, layer):
+    allowed = _ALLOWED[declaration.role]
+    if kind not in allowed:
+        raise SourceError(
+            "wrong-geometry",
+            f"a {declaration.role} cannot be a {kind} layer.",
+            _where(declaration, layer),
+            f"Use a layer of type: {', '.join(allowed)}.",
+        )
+
+
+def _check_geometry(declaration, layer):
+    """Refuse a layer whose geometry does not suit its role, or that has no Z."""
+    wkb = layer.wkbType()
+    if wkb == Qgis.WkbType.NoGeometry:
+        raise SourceError(
+            "wrong-geometry",
+            f"a {declaration.role} needs geometries; the layer is a plain table.",
+            _where(declaration, layer),
+            f"Use a layer of type: {', '.join(_ALLOWED[declaration.role])}.",
+        )
+    kind = {
+        Qgis.GeometryType.Point: "point",
+        Qgis.GeometryType.Line: "line",
+        Qgis.GeometryType.Polygon: "polygon",
+    }.get(QgsWkbTypes.geometryType(wkb))
+    if kind is not None:
+        _check_kind(kind, declaration, layer)
+    has_z = QgsWkbTypes.hasZ(wkb) or wkb in (
+        Qgis.WkbType.Unknown,
+        Qgis.WkbType.GeometryCollection,
+    )
+    if declaration.z.source == "geometry" and not has_z:
+        raise SourceError(
+            "no-z",
+            "z is declared to come from the geometry, but the geometries have no Z.",
+            _where(declaration, layer),
+            "Name the field that holds it, a raster, or a constant value.",
+        )
+
+
+def _wanted_fields(declaration, layer):
+    """Indices of the declared fields by what they are used for."""
+    names = {
+        "z": declaration.z.field if declaration.z.source == "field" else None,
+        "name": declaration.name_field,
+        "dip": declaration.dip_field,
+        "dip_azimuth": declaration.dip_azimuth_field,
+    }
+    where = _where(declaration, layer)
+    return {
+        use: field_index(layer.fields(), name, where)
+        for use, name in names.items()
+        if name
+    }
+
+
+def field_index(fields, name, where):
+    """Give the index of a field.
+
+    Raises
+    ------
+    SourceError
+        With code ``no-field``, listing the fields the layer has.
+    """
+    index = fields.lookupField(name)
+    if index < 0:
+        raise SourceError(
+            "no-field",
+            f"there is no field '{name}'.",
+            where,
+            f"It has: {', '.join(fields.names()) or 'no fields'}.",
+        )
+    return index
+
+
+def read_table(layer, indices, crs, transform_context, feedback=None, near=None):
+    """Read geometries as WKB, feature ids and some attributes.
+
+    Parameters
+    ----------
+    layer : QgsVectorLayer or QgsProcessingFeatureSource
+    indices : list of int
+        Fields to read.
+    crs : QgsCoordinateReferenceSystem
+        CRS to reproject to.
+    transform_context : QgsCoordinateTransformContext
+    feedback, near
+        As in `read_source`.
+
+    Returns
+    -------
+    wkb : list of bytes
+        Empty where a feature has no geometry.
+    fid : list of int
+    columns : list of list
+        Attribute values by field, in the order of `indices`.
+    lost : int
+        Features that could not be reprojected.
+    """
+    lost = []
+    request = _request(layer, indices, crs, transform_context, feedback, lost)
+    wkb, fid, columns = [], [], [[] for _ in indices]
+    for part in _iterators(layer, request, near):
+        _collect(part, indices, wkb, fid, columns, feedback)
+    if near is not None and len(near) > 1:
+        wkb, fid, columns = _once(wkb, fid, columns)
+    return wkb, fid, columns, len(set(lost))
+
+
+def _request(layer, indices, crs, transform_context, feedback, lost):
+    request = QgsFeatureRequest().setSubsetOfAttributes(list(set(indices)))
+    own = layer_crs(layer)
+    if not own.isValid():
+        say(
+            feedback,
+            f"Layer '{layer_name(layer)}' has no CRS; its coordinates are taken to be "
+            f"in the study's CRS ({crs.authid() or crs.description()}).",
+        )
+    elif own != crs:
+        request.setDestinationCrs(crs, transform_context)
+        request.setTransformErrorCallback(lambda feature: lost.append(feature.id()))
+    return request
+
+
+def _iterators(layer, request, near):
+    if near is None:
+        yield layer.getFeatures(request)
+        return
+    for box in near:
+        yield layer.getFeatures(
+            QgsFeatureRequest(request).setFilterRect(QgsRectangle(*map(float, box)))
+        )
+
+
+def _collect(features, indices, wkb, fid, columns, feedback):
+    """Take what is needed of each feature; the hot loop of reading."""
+    add_wkb, add_fid = wkb.append, fid.append
+    adders = [(i, column.append) for i, column in zip(indices, columns)]
+    while True:
+        before = len(fid)
+        for f in islice(features, _BLOCK):
+            add_wkb(f.geometry().asWkb().data())
+            add_fid(f.id())
+            for i, add in adders:
+                add(f[i])
+        if len(fid) - before < _BLOCK:
+            return
+        check_cancelled(feedback)
+
+
+def check_cancelled(feedback):
+    """End the reading where the user has cancelled."""
+    if feedback is not None and feedback.isCanceled():
+        raise SourceError("cancelled", "the run was cancelled; nothing was written.")
+
+
+def _once(wkb, fid, columns):
+    """Keep each feature once that lies in several boxes, in order of its id."""
+    _, first = np.unique(np.array(fid, dtype=np.int64), return_index=True)
+    first = first.tolist()
+    return (
+        [wkb[i] for i in first],
+        [fid[i] for i in first],
+        [[c[i] for i in first] for c in columns],
+    )
+
+
+def _surface(declaration, crs, base, transform_context, feedback):
+    if declaration.z.source != "raster":
+        return None
+    from .grids import read_grid
+
+    layer = open_layer(declaration.z.uri, base, f"{declaration.key}, z raster")
+    if not isinstance(layer, QgsRasterLayer):
+        raise SourceError(
+            "wrong-geometry",
+            f"z is declared to come from a raster, but '{declaration.z.uri}' is a "
+            "vector layer.",
+            declaration.label,
+            "Name a raster.",
+        )
+    return read_grid(layer, crs, transform_context, feedback)
+
+
+def numbers(values):
+    """Turn attribute values into numbers.
+
+    Parameters
+    ----------
+    values : list
+        As QGIS gives them: numbers, text, None or NULL.
+
+    Returns
+    -------
+    number : ndarray (n,)
+        NaN where there is none.
+    text : ndarray (n,) of bool
+        True where a text is not a plain number (a point for the decimals, no
+        thousands separators).
+    """
+    n = len(values)
+    if all(v.__class__ is float for v in values):
+        return np.array(values, dtype=float), np.zeros(n, dtype=bool)
+    number, text = np.full(n, np.nan), np.zeros(n, dtype=bool)
+    for i, value in enumerate(values):
+        if isinstance(value, (int, float)) and not isinstance(value, bool):
+            number[i] = value
+        elif value is None or value == NULL or value == "":
+            continue
+        elif isinstance(value, str) and _NUMBER.fullmatch(value):
+            number[i] = float(value)
+        else:
+            text[i] = True
+    return number, text
+
+
+def texts(values):
+    """Turn attribute values into texts, '' where there is none."""
+    out = np.empty(len(values), dtype=object)
+    out[:] = ["" if v is None or v == NULL else _text(v) for v in values]
+    return out
+
+
+def _text(value):
+    if isinstance(value, float) and value.is_integer():
+        return str(int(value))
+    return str(value).strip()
+
+
+def _azimuths(values):
+    """Azimuths in degrees from numbers or compass points, and which are neither."""
+    number, text = numbers(values)
+    for i in np.flatnonzero(text):
+        try:
+            number[i], text[i] = parse_azimuth(values[i]), False
+        except GeomcoreError:
+            continue
+    return number, text
+
+
+def _features(declaration, layer, wanted, table, surface, feedback):
+    """Make flat arrays of what was read; refuse and count what cannot be used."""
+    wkb, fid, columns, lost = table
+    values = dict(zip(wanted, columns))
+    refused = {"cannot be reprojected": lost} if lost else {}
+    keep = np.array([len(w) > 0 for w in wkb], dtype=bool)
+    _count(refused, "no geometry", ~keep)
+    z = None
+    if "z" in values:
+        z, text = numbers(values["z"])
+        _count(refused, "text in a number field", text & keep)
+        keep &= ~text
+    parts = _parse([w for w, k in zip(wkb, keep) if k])
+    at = np.flatnonzero(keep)
+    parts, kind = _of_one_kind(parts, declaration, layer, refused, len(at))
+    owner = at[parts.owner] if len(at) else parts.owner
+    own = _part_columns(declaration, layer, values, owner, feedback)
+    return Features(
+        kind,
+        parts.xy,
+        _values(declaration, parts, z, owner),
+        parts.offsets,
+        np.array(fid, dtype=np.int64)[owner],
+        own,
+        surface,
+        refused,
+    )
+
+
+def _count(refused, reason, mask):
+    n = int(np.count_nonzero(mask))
+    if n:
+        refused[reason] = refused.get(reason, 0) + n
+
+
+def _parse(wkb):
+    """Parse geometries; curves are first turned into straight pieces."""
+    try:
+        return parse_wkb(wkb)
+    except UnknownGeometry as unknown:
+        for i in unknown.owners.tolist():
+            wkb[i] = _straight(wkb[i])
+        return parse_wkb(wkb)
+
+
+def _straight(wkb):
+    """Turn a curve into straight pieces, as finely as QGIS does by itself."""
+    geometry = QgsGeometry()
+    geometry.fromWkb(wkb)
+    return geometry.constGet().segmentize().asWkb().data()
+
+
+def _of_one_kind(parts, declaration, layer, refused, features):
+    """Keep the parts of the one kind the layer is about; count the others."""
+    empty = features - len(np.unique(parts.owner))
+    if empty:
+        refused["no geometry"] = refused.get("no geometry", 0) + empty
+    kinds, counts = np.unique(parts.kind, return_counts=True)
+    if not len(kinds):
+        return parts, _KINDS[_declared_kind(layer)]
+    kind = int(kinds[np.argmax(counts)])
+    _check_kind(_KINDS[kind], declaration, layer)
+    if len(kinds) > 1:
+        other = parts.kind != kind
+        lost = np.setdiff1d(parts.owner[other], parts.owner[~other])
+        _count(refused, "geometry of another type", np.ones(len(lost)))
+        parts = parts.select(~other)
+    return parts, _KINDS[kind]
+
+
+def _declared_kind(layer):
+    kind = QgsWkbTypes.geometryType(layer.wkbType())
+    return {Qgis.GeometryType.Line: 2, Qgis.GeometryType.Polygon: 3}.get(kind, 1)
+
+
+def _values(declaration, parts, z, owner):
+    """Raw vertical value of each vertex."""
+    if declaration.z.source == "geometry":
+        return parts.z
+    count = np.diff(parts.offsets)
+    if declaration.z.source == "field":
+        return np.repeat(z[owner], count)
+    value = declaration.z.value if declaration.z.source == "constant" else np.nan
+    return np.full(len(parts.xy), value, dtype=float)
+
+
+def _part_columns(declaration, layer, values, owner, feedback):
+    """Declared attributes of each part."""
+    own = {}
+    if "name" in values:
+        name = texts(values["name"])
+        name[name == ""] = declaration.name
+        own["name"] = name[owner]
+    for use, convert in (("dip", numbers), ("dip_azimuth", _azimuths)):
+        if use not in values:
+            continue
+        number, text = convert(values[use])
+        if text.any():
+            say(
+                feedback,
+                f"Layer '{layer_name(layer)}': {int(text.sum())} values of the "
+                f"{use.replace('_', ' ')} field are not numbers and count as unknown.",
+            )
+        own[use] = number[owner]
+    return own
+
+
+def read_section_lines(layer, id_field, crs, transform_context, feedback=None):
+    """Read hand-drawn section lines.
+
+    Parameters
+    ----------
+    layer : QgsVectorLayer or QgsProcessingFeatureSource
+        Lines.
+    id_field : str
+        Field that names the sections; the feature id where it is empty.
+    crs : QgsCoordinateReferenceSystem
+        Of the study.
+    transform_context : QgsCoordinateTransformContext
+    feedback : QgsFeedback, optional
+
+    Returns
+    -------
+    list of SectionLine
+        One a feature; one that cannot be used says why in ``problem``.
+
+    Raises
+    ------
+    SourceError
+        If the layer holds no lines or lacks the field.
+    """
+    where = f"section layer '{layer_name(layer)}'"
+    if QgsWkbTypes.geometryType(layer.wkbType()) != Qgis.GeometryType.Line:
+        raise SourceError(
+            "wrong-geometry",
+            f"sections are lines; the layer holds {_type_name(layer)}.",
+            where,
+            "Use a line layer.",
+        )
+    indices = [field_index(layer.fields(), id_field, where)] if id_field else []
+    wkb, fid, columns, lost = read_table(
+        layer, indices, crs, transform_context, feedback
+    )
+    if lost:
+        say(feedback, f"{where}: {lost} lines cannot be reprojected and are left out.")
+    names = texts(columns[0]) if indices else [str(i) for i in fid]
+    return [_section_line(n, i, w, id_field) for n, i, w in zip(names, fid, wkb)]
+
+
+def _type_name(layer):
+    return QgsWkbTypes.displayString(layer.wkbType())
+
+
+def _section_line(name, fid, wkb, id_field):
+    problem = ""
+    parts = _parse([wkb]) if wkb else None
+    n = 0 if parts is None else len(parts.offsets) - 1
+    if not name:
+        name, problem = f"feature {fid}", f"the field '{id_field}' is empty."
+    if n == 0:
+        problem = "the feature has no geometry."
+    elif n > 1:
+        problem = f"the line has {n} parts."
+    vertices = parts.xy[parts.offsets[0] : parts.offsets[1]] if n else np.empty((0, 2))
+    return SectionLine(str(name), vertices, problem)
