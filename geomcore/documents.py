@@ -1,6 +1,8 @@
 """Strict reading of JSON objects into frozen dataclasses."""
 
+import math
 from dataclasses import MISSING, fields
+from typing import get_args
 
 from .errors import StudyError
 
@@ -60,18 +62,32 @@ def read_object(cls, document, where, **given):
     return cls(**values)
 
 
+def _is_number(value):
+    whole = isinstance(value, (int, float)) and not isinstance(value, bool)
+    return whole and math.isfinite(value)
+
+
+def _is_whole(value):
+    return isinstance(value, int) and not isinstance(value, bool)
+
+
+#: What a JSON value has to be for a field of each type, and how to say it.
+_KINDS = {
+    float: ("a number", _is_number),
+    int: ("a whole number", _is_whole),
+    str: ("a text", lambda value: isinstance(value, str)),
+    tuple: ("a list", lambda value: isinstance(value, (list, tuple))),
+}
+
+
 def _check_type(field, value, where):
     """Refuse a text where a number belongs, and the like."""
-    if value is None:
+    kinds = get_args(field.type) or (field.type,)
+    if value is None and type(None) in kinds:
         return
-    if field.type in (float, "float", "Optional[float]") or str(field.type) == "float]":
-        wrong = isinstance(value, bool) or not isinstance(value, (int, float))
-        if wrong or value != value:
-            raise StudyError(
-                "bad-study", f"{field.name} is {value!r}, not a number.", where
-            )
-    if field.type in (str, "str") and not isinstance(value, str):
-        raise StudyError("bad-study", f"{field.name} is {value!r}, not a text.", where)
+    name, fits = _KINDS.get(kinds[0], ("", None))
+    if fits is not None and not fits(value):
+        raise StudyError("bad-study", f"{field.name} is {value!r}, not {name}.", where)
 
 
 def write_object(thing):

@@ -175,6 +175,13 @@ class SourceDeclaration:
                 f"correlation_length is {self.correlation_length}.",
                 "Give a number of 0 or more.",
             )
+        if self.corridor is not None and not self.corridor > 0:
+            self._refuse(f"corridor is {self.corridor:g}.", "Give more than 0.")
+        if not all(isinstance(v, (int, float)) for v in self.null_values):
+            self._refuse(
+                f"null_values is {list(self.null_values)!r}, not a list of numbers.",
+                "Give the numbers that mean 'unknown'.",
+            )
         object.__setattr__(self, "null_values", tuple(self.null_values))
 
     def _one_of(self, what, allowed):
