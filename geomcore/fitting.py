@@ -9,7 +9,7 @@ from .fit import BedRows, PickResiduals, assemble, residuals, solve_fit
 from .kinematics import ConstantHeave
 from .problem import Problem, Solution, bed_from, bed_in_frame
 
-__all__ = ["FitDetail", "solve_by_fit"]
+__all__ = ["FitDetail", "section_rows", "solve_by_fit"]
 
 #: Nodes in one oblique heave (methods.md section 8).
 NODES = 10
@@ -134,6 +134,22 @@ def solve_by_fit(problem, smoothness=None):
             problem.where,
             "Use the march.",
         )
+    u, beds, points = section_rows(problem)
+    system = assemble(u, beds, points)
+    result = solve_fit(system, smoothness, problem.options.robust)
+    return _solution(problem, beds, u, result)
+
+
+def section_rows(problem):
+    """Give nodes, bed rows and fault points of a section's system.
+
+    Returns
+    -------
+    u : ndarray (n,)
+        Nodes along the shear lines.
+    beds : list of BedRows
+    points : tuple of ndarray (u, z, sigma)
+    """
     others = [_problem_of(o, problem) for o in problem.others]
     beds = [_bed_rows(problem, problem.separation.horizon)]
     beds += [_bed_rows(p, o.name) for p, o in zip(others, problem.others)]
@@ -144,9 +160,7 @@ def solve_by_fit(problem, smoothness=None):
     count = int(np.ceil((end - u_foot) / (heave / NODES))) + 1
     u = u_foot + heave / NODES * np.arange(max(count, NODES + 2))
     points = _with_detachment(points, problem, beds, u)
-    system = assemble(u, beds, tuple(points.T))
-    result = solve_fit(system, smoothness, problem.options.robust)
-    return _solution(problem, beds, u, result)
+    return u, beds, tuple(points.T)
 
 
 def _foot(problem):
