@@ -261,6 +261,31 @@ class SectionFrame:
             off[inside] = (xy[inside] - on_line) @ self.strike_vector
         return x, off
 
+    def curve_on_map(self, x, z):
+        """Give a curve of the section in map coordinates, on the drawn line.
+
+        Parameters
+        ----------
+        x, z : ndarray (n,)
+            The curve, x strictly growing, straight between its points.
+
+        Returns
+        -------
+        ndarray (m, 3)
+            Its points and, between them, one at every bend of the line, with z
+            interpolated; cut at the ends of the line, and empty where the curve
+            lies beyond them.
+        """
+        x, z = np.asarray(x, dtype=float), np.asarray(z, dtype=float)
+        if not len(x):
+            return np.empty((0, 3))
+        low, high = max(x[0], 0.0), min(x[-1], self.x_max)
+        if low > high or (low == high and len(x) > 1):
+            return np.empty((0, 3))
+        own = x[(x >= low) & (x <= high)]
+        at = np.unique(np.r_[low, own, self.bends_between(low, high), high])
+        return np.column_stack([self.to_map(at), np.interp(at, x, z)])
+
     def bends_between(self, x0, x1):
         """Give x of the bends of the line strictly between x0 and x1, growing."""
         x = np.sort(self._x[1:-1])
