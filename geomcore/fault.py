@@ -135,7 +135,7 @@ def known_fault(picks, cutoffs=()):
     order = np.lexsort((-z, x))
     x, z, dip = x[order], z[order], dip[order]
     error = np.r_[fault.sigma_z, [c.sigma_z for c in cutoffs]][order]
-    doubts = _wrong_way(x, z, where)
+    doubts = _wrong_way(x, z, dip, where)
     n = _known_piece(x)
     ties = {"tie_x": x[n:], "tie_z": z[n:], "tie_sigma": error[n:]}
     x, z, dip = x[:n], z[:n], dip[:n]
@@ -177,16 +177,25 @@ def _known_piece(x):
     return len(x)
 
 
-def _wrong_way(x, z, where):
-    """Doubt a fault that rises towards the hanging wall as a whole."""
+def _wrong_way(x, z, dip, where):
+    """Refuse a fault that goes the wrong way; doubt dips that do."""
+    remedy = "Check the hanging-wall side, the sign of the picks and their datum."
     if len(x) > 1 and np.ptp(x) > 0 and np.polyfit(x, z, 1)[0] > 0:
         raise PicksError(
             "wrong-side",
             "the fault picks rise towards the declared hanging-wall side.",
             where,
-            "Check the hanging-wall side, the sign of the picks and their datum.",
+            remedy,
         )
-    return []
+    if not np.any(dip < 0):
+        return []
+    text = (
+        f"the dip given for the fault ({np.nanmin(dip):.0f} degrees along transport) "
+        "dips away from the declared hanging-wall side"
+    )
+    if len(x) == 1:
+        raise PicksError("wrong-side", f"{text}.", where, remedy)
+    return [Doubt("fault-dip-away", f"{text}; it is not used.", where)]
 
 
 def _slope_from(x, z, dip, prefer_dip):
