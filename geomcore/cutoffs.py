@@ -179,7 +179,7 @@ def _as_cutoff(picks, i, wall):
         wall,
         float(picks.x[i]),
         float(picks.z[i]),
-        0.0,
+        float(picks.sigma_x[i]),
         float(picks.sigma_z[i]),
         "given",
     )
@@ -378,6 +378,7 @@ def _regional(footwall, far, moved_by, fault, foot, spec, where, doubts):
             float(fault.x_at(spec.z)),
             float(spec.z),
             how="the given regional meets the fault",
+            slides=True,
         )
     through = (foot.x, foot.z) if foot else None
     if through and slope is None and len(x) < 1:
@@ -410,7 +411,13 @@ def _regional(footwall, far, moved_by, fault, foot, spec, where, doubts):
     s = np.hypot(float(regional.sigma_at(at)), fault.sigma)
     across = max(abs(slope_f - regional.slope), 1e-9)
     foot = CutOff(
-        "footwall", at, regional.z0, s / across, s * abs(slope_f) / across, regional.how
+        "footwall",
+        at,
+        regional.z0,
+        s / across,
+        s * abs(slope_f) / across,
+        regional.how,
+        slides=True,
     )
     return regional, foot
 

@@ -61,7 +61,18 @@ def _update_features(total, data):
 
 
 def _update_picks(total, table, sampled):
-    names = ("x", "z", "sigma_z", "correlation", "dip", "kind", "name", "wall", "used")
+    names = (
+        "x",
+        "z",
+        "sigma_z",
+        "sigma_x",
+        "correlation",
+        "dip",
+        "kind",
+        "name",
+        "wall",
+        "used",
+    )
     if sampled is not None:
         table = table.select(np.isin(table.source.astype(str), sampled))
         names = ("x", "z")

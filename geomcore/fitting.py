@@ -33,6 +33,8 @@ class FitDetail:
         Misfit of every bed pick of every horizon used.
     misfit_rms : float
         Of the standardised residuals; about 1 where the sigmas are right.
+    covariance_root : ndarray (n, n)
+        Posterior of picks and fault points along the shear lines, as columns.
     """
 
     smoothness: float
@@ -40,6 +42,7 @@ class FitDetail:
     resolution: np.ndarray
     residuals: PickResiduals
     misfit_rms: float
+    covariance_root: np.ndarray
 
 
 def _bed_rows(problem, name):
@@ -119,8 +122,7 @@ def solve_by_fit(problem, smoothness=None):
     Returns
     -------
     Solution
-        With `FitDetail`; its sigma is the posterior of the picks and fault points
-        alone, along the shear lines.
+        With `FitDetail`.
 
     Raises
     ------
@@ -182,11 +184,10 @@ def _solution(problem, beds, u, result):
         result.resolution,
         misfit,
         float(np.sqrt((misfit.standardised**2).mean())),
+        np.linalg.cholesky(result.covariance),
     )
     hang = problem.separation.hanging_wall
     start = int(np.searchsorted(u, hang.x - hang.z * problem.tan - 1e-6)) + 1
-    # outside the posterior: the error of the known piece as a whole
-    own = np.sqrt(np.diag(result.covariance))
     return Solution(
         u,
         result.z,
@@ -196,7 +197,6 @@ def _solution(problem, beds, u, result):
         problem.regional_at(u - heave),
         bed,
         min(start, len(u)),
-        sigma=own,
         reach=_in_reach(u, beds, problem.fault, problem.tan),
         detail=detail,
     )

@@ -37,6 +37,7 @@ _COLUMNS = {
     "z": float,
     "off_section": float,
     "sigma_z": float,
+    "sigma_x": float,
     "correlation": float,
     "dip": float,
     "kind": object,
@@ -69,6 +70,8 @@ class Picks:
         of transport.
     sigma_z : ndarray (n,)
         One standard deviation of z.
+    sigma_x : ndarray (n,)
+        One standard deviation of x; used for given cut-offs.
     correlation : ndarray (n,)
         Length over which the errors of neighbouring picks of the source go
         together; 0 where they are independent.
@@ -91,6 +94,7 @@ class Picks:
     z: np.ndarray
     off_section: np.ndarray
     sigma_z: np.ndarray
+    sigma_x: np.ndarray
     correlation: np.ndarray
     dip: np.ndarray
     kind: np.ndarray
@@ -147,6 +151,7 @@ class Picks:
             "distance": np.asarray(x, dtype=float),
             "off_section": 0.0,
             "sigma_z": 0.0,
+            "sigma_x": 0.0,
             "correlation": 0.0,
             "dip": np.nan,
             "kind": "horizon",
@@ -546,6 +551,7 @@ def pull_source(prepared, frame, options):
         distance=frame.distance_at(x),
         off_section=off,
         sigma_z=_sigma(prepared),
+        sigma_x=declaration.sigma_x,
         correlation=declaration.correlation_length,
         dip=np.nan if no_part else _part_dips(prepared, frame, part, xy, options),
         kind=_KIND_OF_ROLE[declaration.role],

@@ -129,9 +129,6 @@ class Solution:
         The bed against u, its sigma along the shear lines.
     start : int
         Nodes on the known or assumed piece.
-    sigma : ndarray (n,), optional
-        One standard deviation of z along the shear lines from the picks alone,
-        where the solver gives it.
     reach : ndarray (n,) of bool, optional
         False where a node has no data near it.
     detail : object, optional
@@ -146,7 +143,6 @@ class Solution:
     regional_z: np.ndarray
     bed: Profile
     start: int
-    sigma: object = None
     reach: object = None
     detail: object = None
 

@@ -27,6 +27,9 @@ class CutOff:
         One standard deviation; the two are tied by the fault's slope.
     how : str
         ``given`` or how the horizon was extended to the fault.
+    slides : bool
+        Its error slides it along the fault (found cut-offs); otherwise the errors
+        of x and z are independent (given ones).
     """
 
     wall: str
@@ -35,6 +38,7 @@ class CutOff:
     sigma_x: float = 0.0
     sigma_z: float = 0.0
     how: str = "given"
+    slides: bool = False
 
 
 @dataclass(frozen=True)
@@ -154,6 +158,7 @@ def extend_to_fault(picks, fault, wall, where):
         s / across,
         s * abs(slope) / across,
         f"extended over {max(reach, 0.0):.0f}",
+        slides=True,
     )
     return cut, float(reach)
 

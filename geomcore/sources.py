@@ -92,6 +92,9 @@ class SourceDeclaration:
         Where the value comes from.
     sigma : float
         One standard deviation of the value, in `unit`.
+    sigma_x : float
+        One standard deviation of the position across strike, in the study's length
+        unit; used for given cut-offs.
     correlation_length : float
         Distance along the section, in the study's length unit, over which errors of
         neighbouring picks go together (contours, gridded surfaces); 0 if independent.
@@ -129,6 +132,7 @@ class SourceDeclaration:
     domain: str = "depth"
     z: ZDeclaration = field(default_factory=ZDeclaration)
     sigma: float = 0.0
+    sigma_x: float = 0.0
     correlation_length: float = 0.0
     datum_elevation: float = 0.0
     time_way: Optional[str] = None
@@ -168,13 +172,10 @@ class SourceDeclaration:
                 f"z comes from a {self.z.source}, but no {needed} is given.",
                 f"Give z.{needed}.",
             )
-        if not np.isfinite(self.sigma) or self.sigma < 0:
-            self._refuse(f"sigma is {self.sigma}.", "Give a number of 0 or more.")
-        if not np.isfinite(self.correlation_length) or self.correlation_length < 0:
-            self._refuse(
-                f"correlation_length is {self.correlation_length}.",
-                "Give a number of 0 or more.",
-            )
+        for name in ("sigma", "sigma_x", "correlation_length"):
+            value = getattr(self, name)
+            if not np.isfinite(value) or value < 0:
+                self._refuse(f"{name} is {value}.", "Give a number of 0 or more.")
         if self.corridor is not None and not self.corridor > 0:
             self._refuse(f"corridor is {self.corridor:g}.", "Give more than 0.")
         if not all(isinstance(v, (int, float)) for v in self.null_values):

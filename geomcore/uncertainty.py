@@ -1,6 +1,6 @@
 """How sure the predicted fault is: linear propagation of the stated errors."""
 
-from dataclasses import replace
+from dataclasses import dataclass, replace
 
 import numpy as np
 
@@ -10,11 +10,44 @@ from .problem import solve_march
 from .profile import Profile
 from .stepping import hat_matrix, march
 
-__all__ = ["solution_sigma"]
+__all__ = ["ErrorColumns", "error_columns", "solution_sigma"]
+
+
+@dataclass(frozen=True, eq=False)
+class ErrorColumns:
+    """What each independent error of unit size does to the fault.
+
+    Parameters
+    ----------
+    x : ndarray (n,)
+        Nodes of the solution.
+    columns : ndarray (n, k)
+        Change of F at fixed x; the covariance of F is ``columns @ columns.T``.
+    source : ndarray (k,) of str
+        Where each error comes from: ``picks``, ``known fault``, ``regional``,
+        ``cut-offs``, ``shear angle``.
+    """
+
+    x: np.ndarray
+    columns: np.ndarray
+    source: np.ndarray
+
+    def at(self, x, without=()):
+        """Give the columns at other places, some sources left out."""
+        keep = ~np.isin(self.source.astype(str), without)
+        j = np.clip(np.searchsorted(self.x, x), 1, len(self.x) - 1)
+        f = ((x - self.x[j - 1]) / (self.x[j] - self.x[j - 1]))[:, None]
+        return ((1 - f) * self.columns[j - 1] + f * self.columns[j])[:, keep]
 
 
 def solution_sigma(problem, solution):
-    """Give one standard deviation of the predicted fault at fixed x.
+    """Give one standard deviation of the predicted fault at fixed x, at its nodes."""
+    columns = error_columns(problem, solution).columns
+    return np.sqrt((columns**2).sum(axis=1))
+
+
+def error_columns(problem, solution):
+    """Propagate every stated error to the fault.
 
     Parameters
     ----------
@@ -23,25 +56,32 @@ def solution_sigma(problem, solution):
 
     Returns
     -------
-    ndarray (n,)
-        At the nodes of the solution.
+    ErrorColumns
 
     Notes
     -----
     Pick noise is carried through the march itself, which is linear in the bed, or is
-    the posterior of the fit;
-    level and dip of the regional, the hanging-wall cut-off and the shear angle
-    through differences of whole marches. The error of the known piece is copied
-    into every strip and does not grow (methods.md section 13). An error along the
-    shear line becomes a vertical one by 1 + tan(dip) tan(a) (section 8).
+    the posterior of the fit. Regional, cut-offs and shear angle are carried by
+    differences of whole solutions, over one standard deviation to either side: over
+    less the noise of single picks, which slides under the strips, would pass for an
+    effect of the parameter. The error of the known piece is copied into every strip
+    and does not grow (methods.md section 13). An error along the shear line becomes
+    a vertical one by 1 + tan(dip) tan(a) (section 8).
     """
     x = from_shear_frame(solution.u, solution.z, problem.model.shear_angle)
     frame_factor = 1.0 - _mean_slope(x, solution) * problem.tan
-    from_picks = solution.sigma if solution.sigma is not None else _carried(solution)
-    variance = (from_picks * frame_factor) ** 2 + problem.fault.sigma**2
-    columns, covariance = _parameter_errors(problem, solution, x)
-    variance += np.einsum("ni,ij,nj->n", columns, covariance, columns)
-    return np.sqrt(np.maximum(variance, 0.0))
+    of_picks = _pick_columns(solution) * frame_factor[:, None]
+    of_known = np.full((len(x), 1), problem.fault.sigma)
+    of_regional = _regional_columns(problem, solution, x)
+    blocks = [("picks", of_picks), ("known fault", of_known), ("regional", of_regional)]
+    for name, sigma, source in _single_errors(problem):
+        column = _difference(problem, solution, x, name, sigma) * sigma
+        blocks.append((source, column[:, None]))
+    return ErrorColumns(
+        x,
+        np.hstack([b for _, b in blocks]),
+        np.concatenate([np.full(b.shape[1], n, dtype=object) for n, b in blocks]),
+    )
 
 
 def _mean_slope(x, solution):
@@ -52,8 +92,10 @@ def _mean_slope(x, solution):
     return (solution.z[high] - solution.z[low]) / (x[high] - x[low])
 
 
-def _carried(solution):
-    """Pick noise carried through the march, along the shear lines."""
+def _pick_columns(solution):
+    """Pick errors along the shear lines, as columns."""
+    if solution.detail is not None:
+        return solution.detail.covariance_root
     bed = solution.bed
     weights = hat_matrix(solution.u, bed.x)
     weights[:, 0] = 0.0  # the bed's first point is the cut-off, varied apart
@@ -64,71 +106,105 @@ def _carried(solution):
         weights,
     )
     if not bed.correlation.any():
-        return np.sqrt(rows**2 @ bed.sigma**2)
-    covariance = bed.covariance()
-    return np.sqrt(np.einsum("ni,ij,nj->n", rows, covariance, rows))
+        return rows * bed.sigma
+    small = 1e-12 * np.eye(len(bed)) * bed.sigma**2
+    return rows @ np.linalg.cholesky(bed.covariance() + small)
 
 
-def _parameter_errors(problem, solution, x):
-    """Change of F at fixed x with each parameter, and their covariance.
-
-    The differences are taken over one standard deviation to either side: over less
-    the noise of single picks, which slides under the strips, would pass for an
-    effect of the parameter.
-    """
+def _regional_columns(problem, solution, x):
+    """Level and dip of the regional, whose errors go together."""
     a, b, c = problem.regional.covariance
-    small = 1e-3 * problem.separation.throw
-    sigmas = {
-        "level": np.sqrt(a),
-        "slope": np.sqrt(c),
-        "hanging_wall": problem.separation.hanging_wall.sigma_z,
-        "angle": problem.options.shear_angle_sigma,
-    }
-    least = {"level": small, "slope": 1e-4, "hanging_wall": small, "angle": 0.0}
-    trials = {n: max(s, least[n]) for n, s in sigmas.items() if max(s, least[n]) > 0}
-    columns = np.empty((len(x), len(trials)))
-    for i, (name, step) in enumerate(trials.items()):
-        up, down = (
-            np.interp(x, *_solve_again(_moved(problem, name, way * step), solution))
-            for way in (1, -1)
-        )
-        columns[:, i] = (up - down) / (2.0 * step)
-    covariance = np.diag([sigmas[n] ** 2 for n in trials])
-    covariance[:2, :2] = [[a, b], [b, c]]
-    return columns, covariance
+    steps = (
+        max(np.sqrt(a), 1e-3 * problem.separation.throw),
+        max(np.sqrt(c), 1e-4),
+    )
+    names = ("level", "slope")
+    effect = [_difference(problem, solution, x, n, s) for n, s in zip(names, steps)]
+    values, vectors = np.linalg.eigh([[a, b], [b, c]])
+    return np.column_stack(effect) @ (vectors * np.sqrt(np.maximum(values, 0.0)))
+
+
+def _single_errors(problem):
+    """Errors that stand alone: name of the parameter, its sigma, its source."""
+    foot, hang = problem.separation.footwall, problem.separation.hanging_wall
+    found = [
+        ("hanging_wall_z", hang.sigma_z, "cut-offs"),
+        ("hanging_wall_x", 0.0 if hang.slides else hang.sigma_x, "cut-offs"),
+        ("footwall_x", 0.0 if foot.slides else foot.sigma_x, "cut-offs"),
+        ("angle", problem.options.shear_angle_sigma, "shear angle"),
+    ]
+    return [f for f in found if f[1] > 0]
+
+
+def _difference(problem, solution, x, name, step):
+    """Change of F at fixed x with a parameter, per unit of it."""
+    up, down = (
+        np.interp(x, *_solve_again(_moved(problem, name, way * step), solution))
+        for way in (1, -1)
+    )
+    return (up - down) / (2.0 * step)
 
 
 def _solve_again(problem, solution):
-    """Solve by the same solver; x and z of the fault."""
+    """Solve by the same solver; x and z of the fault, x growing."""
     if solution.detail is None:
         moved = solve_march(problem)
     else:
         moved = solve_by_fit(problem, solution.detail.smoothness)
-    return from_shear_frame(moved.u, moved.z, problem.model.shear_angle), moved.z
+    x = from_shear_frame(moved.u, moved.z, problem.model.shear_angle)
+    return np.maximum.accumulate(x), moved.z
 
 
 def _moved(problem, name, step):
-    """Move one parameter; cut-offs slide along the fault."""
-    separation, fault = problem.separation, problem.fault
-    foot, hang = separation.footwall, separation.hanging_wall
+    """Move one parameter; found cut-offs slide along the fault."""
     if name == "angle":
         angle = problem.model.shear_angle + step
         return replace(problem, model=replace(problem.model, shear_angle=angle))
     if name == "slope":
         return replace(problem, regional=problem.regional.shifted(0.0, step))
-    if name == "level":
+    if name in ("level", "footwall_x"):
+        return _moved_footwall(problem, name, step)
+    return _moved_hanging_wall(problem, name, step)
+
+
+def _moved_footwall(problem, name, step):
+    """Raise the regional, or move the footwall cut-off along it."""
+    foot, regional = problem.separation.footwall, problem.regional
+    if name == "footwall_x":
+        dx, dz = step, 0.0
+    elif foot.slides:
         # a regional raised by step meets the fault at another place
-        steep = float(fault.slope_at(foot.x))
-        dx = step / (steep - problem.regional.slope)
-        foot = replace(foot, x=foot.x + dx, z=foot.z + steep * dx)
-        line = problem.regional.shifted(step, 0.0).moved_to(foot.x)
-        return replace(
-            problem, separation=replace(separation, footwall=foot), regional=line
-        )
-    slope = float(fault.slope_at(hang.x))
-    hang = replace(hang, x=hang.x + step / slope, z=hang.z + step)
+        steep = float(problem.fault.slope_at(foot.x))
+        dx = step / (steep - regional.slope)
+        dz = steep * dx
+    else:
+        dx, dz = 0.0, step
+    foot = replace(foot, x=foot.x + dx, z=foot.z + dz)
+    line = regional.shifted(step if name == "level" else 0.0, 0.0)
+    if name == "footwall_x":
+        line = replace(line, x0=foot.x)  # it goes through the cut-off
+    separation = replace(problem.separation, footwall=foot)
+    return replace(problem, separation=separation, regional=line.moved_to(foot.x))
+
+
+def _moved_hanging_wall(problem, name, step):
+    hang = problem.separation.hanging_wall
+    if name == "hanging_wall_x":
+        dx, dz = step, 0.0
+    elif hang.slides:
+        dx, dz = step / float(problem.fault.slope_at(hang.x)), step
+    else:
+        dx, dz = 0.0, step
+    hang = replace(hang, x=hang.x + dx, z=hang.z + dz)
     bed = problem.bed
+    beyond = bed.x > hang.x + 1e-6
+    beyond[0] = False
     bed = Profile(
-        np.r_[hang.x, bed.x[1:]], np.r_[hang.z, bed.z[1:]], bed.sigma, bed.correlation
+        np.r_[hang.x, bed.x[beyond]],
+        np.r_[hang.z, bed.z[beyond]],
+        np.r_[bed.sigma[0], bed.sigma[beyond]],
+        np.r_[0.0, bed.correlation[beyond]],
     )
-    return replace(problem, separation=replace(separation, hanging_wall=hang), bed=bed)
+    return replace(
+        problem, separation=replace(problem.separation, hanging_wall=hang), bed=bed
+    )
