@@ -19,6 +19,7 @@ __all__ = [
     "MarchOptions",
     "MarchTable",
     "Prediction",
+    "check_problem",
     "predict_fault",
 ]
 
@@ -210,8 +211,7 @@ def predict_fault(
         options or MarchOptions(),
         tuple(others),
     )
-    _check_separation(problem)
-    _check_fault_in_frame(problem)
+    check_problem(problem)
     solution = SOLVERS[solver](problem)
     if len(solution.u) <= solution.start:
         raise ConstructionError(
@@ -239,6 +239,19 @@ def predict_fault(
         tuple(march_doubts(problem, solution, trace, detachment)),
         solution.detail,
     )
+
+
+def check_problem(problem):
+    """Refuse a problem the kernel has no solution for.
+
+    Raises
+    ------
+    ConstructionError
+        If the separation is reverse or on the wrong side, or the shear direction is
+        parallel to the fault.
+    """
+    _check_separation(problem)
+    _check_fault_in_frame(problem)
 
 
 def _check_separation(problem):
