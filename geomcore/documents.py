@@ -6,7 +6,22 @@ from typing import get_args
 
 from .errors import StudyError
 
-__all__ = ["read_object", "write_object"]
+__all__ = ["read_list", "read_object", "require", "write_object"]
+
+
+def require(condition, reason, where, remedy=""):
+    """Refuse a study, with a reason, where a condition does not hold."""
+    if not condition:
+        raise StudyError("bad-study", reason, where, remedy)
+
+
+def read_list(document, name, where):
+    """Give a list of an object's, empty if it is not there; refuse anything else."""
+    value = document.get(name, [])
+    require(
+        isinstance(value, (list, tuple)), f"{name} is {value!r}, not a list.", where
+    )
+    return value
 
 
 def read_object(cls, document, where, **given):

@@ -4,7 +4,7 @@ import json
 from dataclasses import dataclass, field, replace
 from typing import Optional
 
-from .documents import read_object, write_object
+from .documents import read_list, read_object, require, write_object
 from .errors import StudyError
 from .kinematics import MODELS, model_named
 from .sources import SourceDeclaration
@@ -30,6 +30,15 @@ VERSION = 1
 SOLVERS = ("march", "fit")
 
 
+def _more_than(least, where, or_equal=False, **values):
+    """Refuse numbers that are not beyond a bound; those not given pass."""
+    for name, value in values.items():
+        if value is None or value > least or (or_equal and value == least):
+            continue
+        limit = f"{least:g} or more" if or_equal else f"more than {least:g}"
+        require(False, f"{name} is {value:g}.", where, f"Give {limit}.")
+
+
 @dataclass(frozen=True)
 class ParallelSpec:
     """Parallel sections to be laid across the fault trace (see `parallel_sections`)."""
@@ -39,6 +48,16 @@ class ParallelSpec:
     footwall_length: float = 2000.0
     hanging_wall_length: float = 8000.0
     extent: Optional[tuple] = None
+
+    def __post_init__(self):
+        extent = () if self.extent is None else self.extent
+        numbers = all(isinstance(v, (int, float)) for v in extent)
+        require(
+            self.extent is None or (len(extent) == 4 and numbers),
+            f"extent is {self.extent!r}, not four numbers.",
+            "sections.parallel",
+            "Give xmin, ymin, xmax, ymax.",
+        )
 
 
 @dataclass(frozen=True)
@@ -99,6 +118,15 @@ class PicksSpec:
     separation_to: float = 500.0
     tracked: tuple = ()
 
+    def __post_init__(self):
+        _more_than(0, "picks", corridor=self.corridor, grid_step=self.grid_step)
+        at_least = {
+            "fault_buffer": self.fault_buffer,
+            "separation_from": self.separation_from,
+        }
+        _more_than(0, "picks", or_equal=True, **at_least)
+        _more_than(self.separation_from, "picks", separation_to=self.separation_to)
+
 
 @dataclass(frozen=True)
 class RegionalSpec:
@@ -121,6 +149,17 @@ class RegionalSpec:
     dip: Optional[float] = None
     footwall_within: Optional[float] = None
     far_from: Optional[float] = None
+
+    def __post_init__(self):
+        where = "construction.regional"
+        distances = {"footwall_within": self.footwall_within, "far_from": self.far_from}
+        _more_than(0, where, **distances)
+        require(
+            self.dip is None or abs(self.dip) < 90,
+            f"dip is {self.dip}.",
+            where,
+            "Give a dip between -90 and 90 degrees, positive down to the hanging wall.",
+        )
 
 
 @dataclass(frozen=True)
@@ -180,6 +219,21 @@ class ConstructionSpec:
     regional: RegionalSpec = field(default_factory=RegionalSpec)
     further_horizons: tuple = ()
 
+    def __post_init__(self):
+        where = "construction"
+        _more_than(0, where, detachment_sigma=self.detachment_sigma)
+        sigma = self.shear_angle_sigma
+        _more_than(0, where, or_equal=True, shear_angle_sigma=sigma)
+        require(
+            self.samples_per_strip >= 4, "samples_per_strip has to be 4 or more.", where
+        )
+        require(
+            self.solver in SOLVERS,
+            f"there is no solver '{self.solver}'.",
+            where,
+            "Use one of: " + ", ".join(SOLVERS) + ".",
+        )
+
 
 @dataclass(frozen=True)
 class OutputsSpec:
@@ -234,31 +288,23 @@ class Study:
     note: str = ""
 
     def __post_init__(self):
-        if self.length_unit not in LENGTH_UNITS:
-            raise StudyError(
-                "bad-study",
-                f"length_unit is '{self.length_unit}'.",
-                "study",
-                "Use one of: " + ", ".join(LENGTH_UNITS) + ".",
-            )
+        require(
+            self.length_unit in LENGTH_UNITS,
+            f"length_unit is '{self.length_unit}'.",
+            "study",
+            "Use one of: " + ", ".join(LENGTH_UNITS) + ".",
+        )
         keys = [s.key for s in self.sources]
         twice = sorted({k for k in keys if keys.count(k) > 1})
-        if twice:
-            raise StudyError(
-                "bad-study", f"source keys used twice: {', '.join(twice)}.", "study"
+        require(not twice, f"source keys used twice: {', '.join(twice)}.", "study")
+        for key in self.picks.tracked:
+            require(
+                key in keys,
+                f"tracked names {key!r}, which is no source.",
+                "picks",
+                "Sources: " + ", ".join(keys) + ".",
             )
         model_named(self.construction.model, shear_angle=self.construction.shear_angle)
-        if self.construction.solver not in SOLVERS:
-            raise StudyError(
-                "bad-study",
-                f"there is no solver '{self.construction.solver}'.",
-                "construction",
-                "Use one of: " + ", ".join(SOLVERS) + ".",
-            )
-        if self.construction.samples_per_strip < 4:
-            raise StudyError(
-                "bad-study", "samples_per_strip has to be 4 or more.", "construction"
-            )
 
     @classmethod
     def from_dict(cls, document):
@@ -321,11 +367,9 @@ def _read_parts(document):
         parts["sections"] = _read_sections(document["sections"])
     if "construction" in document:
         parts["construction"] = _read_construction(document["construction"])
-    if not isinstance(document.get("sources", []), list):
-        raise StudyError("bad-study", "sources has to be a list.", "study")
-    parts["sources"] = tuple(
-        SourceDeclaration.from_dict(s) for s in document.get("sources", [])
-    )
+    sources = document.get("sources", [])
+    require(isinstance(sources, list), "sources has to be a list.", "study")
+    parts["sources"] = tuple(SourceDeclaration.from_dict(s) for s in sources)
     return parts
 
 
@@ -339,15 +383,15 @@ def _read_sections(document):
 
 
 def _read_construction(document):
-    given = {}
+    where, given = "construction", {}
     if isinstance(document, dict):
         if "regional" in document:
             given["regional"] = read_object(
                 RegionalSpec, document["regional"], "construction.regional"
             )
-        given["fit_horizons"] = tuple(document.get("fit_horizons", ()))
+        given["fit_horizons"] = tuple(read_list(document, "fit_horizons", where))
         given["further_horizons"] = tuple(
             read_object(HorizonSpec, h, "construction.further_horizons")
-            for h in document.get("further_horizons", ())
+            for h in read_list(document, "further_horizons", where)
         )
-    return read_object(ConstructionSpec, document, "construction", **given)
+    return read_object(ConstructionSpec, document, where, **given)

@@ -6,7 +6,7 @@ from typing import Any, Callable, Optional
 
 import numpy as np
 
-from .documents import read_object, write_object
+from .documents import read_object, require, write_object
 from .errors import SourceError
 from .units import LENGTH_UNITS, length_factor
 
@@ -211,6 +211,11 @@ class SourceDeclaration:
         SourceError
             If a declared value is not one of the allowed ones.
         """
+        require(
+            isinstance(document, dict),
+            f"{document!r} is no source: an object with named entries is expected.",
+            "sources",
+        )
         label = f"source '{document.get('layer') or document.get('key', '?')}'"
         z = read_object(ZDeclaration, document.get("z", {}), f"{label}, z")
         rest = {k: v for k, v in document.items() if k != "z"}

@@ -112,6 +112,11 @@ def oblique_heave_for_heave(fault, regional, angle, heave):
     return heave + drop * math.tan(math.radians(angle))
 
 
+def _regional_on_shear_line(regional, u, t):
+    """Find x where a regional meets the shear line x - z t = u."""
+    return bisected(lambda x: u - (x - regional(x) * t), -80000.0, 200000.0)
+
+
 def rolled_bed(fault, regional, angle, oblique_heave, step, reach):
     """Move particles of the regional and give the bed from its cut-off outwards.
 
@@ -123,7 +128,7 @@ def rolled_bed(fault, regional, angle, oblique_heave, step, reach):
     u = x_foot - z_foot * t
     bed = []
     while True:
-        start = bisected(lambda x: u - (x - regional(x) * t), -80000.0, 200000.0)
+        start = _regional_on_shear_line(regional, u, t)
         x, z = moved_particle(fault, angle, oblique_heave, start, regional(start))
         if x > reach:
             return bed
@@ -152,8 +157,10 @@ def hand_march(start, bed, regional, angle, per_strip):
     heave = lean[-1][0] - lean[0][0]
     step = heave / per_strip
     z_zero, slope = regional(0.0), regional(1.0) - regional(0.0)
-    row = [between(lean, min(lean[0][0] + i * step, lean[-1][0]))
-           for i in range(per_strip + 1)]
+    row = [
+        between(lean, min(lean[0][0] + i * step, lean[-1][0]))
+        for i in range(per_strip + 1)
+    ]
     while True:
         i = len(row)
         u = lean[0][0] + i * step

@@ -100,8 +100,9 @@ class World:
 
 def frame_for(world):
     """A section straight along transport from x = -4000 of the world on."""
-    return SectionFrame("S1", world.place.at([-4000.0, world.reach + 4000.0]),
-                        world.place.azimuth)
+    return SectionFrame(
+        "S1", world.place.at([-4000.0, world.reach + 4000.0]), world.place.azimuth
+    )
 
 
 def direct_inputs(world, sigma=0.0):
@@ -195,7 +196,7 @@ def study_for(world, sigma=0.0, **construction):
 def truth_points(world, fault_spacing=30.0, footwall_spacing=60.0):
     """Give (x, z) of the fault picks and of the horizon picks of a world."""
     foot, hang = world.footwall, world.hanging_wall
-    count = max(int(round(hang[0] / fault_spacing)), 4)
+    count = max(round(hang[0] / fault_spacing), 4)
     deep = world.fault_points(np.linspace(0.0, hang[0], count)[1:])
     x = np.arange(foot[0] - 10.0, foot[0] - 3500.0, -footwall_spacing)[::-1]
     before = np.column_stack([x, world.regional(x)])

@@ -57,7 +57,11 @@ def test_known_piece_is_told_from_its_continuation():
     """Known is what lies between the first and the last pick."""
     fault, _ = known_fault(fault_picks())
     assert fault.is_known([-1.0, 0.0, 900.0, 1800.0, 1801.0]).tolist() == [
-        False, True, True, True, False,
+        False,
+        True,
+        True,
+        True,
+        False,
     ]
     lone, _ = known_fault(fault_picks([0.0], [0.0], dip=60.0))
     assert not lone.is_known([0.0]).any()

@@ -103,7 +103,10 @@ def test_crossings_at_the_ends_of_the_section_are_kept():
 def test_crossings_equal_those_of_the_plain_search(parts, turn):
     """Indexed search finds what going through all segments one by one finds."""
     a = math.radians(turn)
-    leg = [(-8.3 * math.sin(a), -8.3 * math.cos(a)), (8.1 * math.sin(a), 8.1 * math.cos(a))]
+    leg = [
+        (-8.3 * math.sin(a), -8.3 * math.cos(a)),
+        (8.1 * math.sin(a), 8.1 * math.cos(a)),
+    ]
     parts = [
         [p for i, p in enumerate(part) if i == 0 or p[:2] != part[i - 1][:2]]
         for part in parts
@@ -120,7 +123,9 @@ def test_crossings_equal_those_of_the_plain_search(parts, turn):
     assert len(got) == len(inside)
     if inside:
         assert got[:, 0] == pytest.approx([e[0] for e in inside], abs=1e-6)
-        assert sorted(got[:, 1]) == pytest.approx(sorted(e[1] for e in inside), abs=1e-6)
+        assert sorted(got[:, 1]) == pytest.approx(
+            sorted(e[1] for e in inside), abs=1e-6
+        )
 
 
 def test_parts_are_not_joined_across_their_gap():
@@ -219,8 +224,15 @@ def test_surface_trace_takes_its_elevation_from_a_raster():
     picks = pulled(lifted, role="fault trace")
     assert picks.z == pytest.approx([20.0])
     assert picks.kind.tolist() == ["fault"]
-    hole = Features("line", trace.xy, trace.value, trace.offsets, trace.fid, {},
-                    Grid(lambda xy: np.full(len(xy), np.nan), 10.0))
+    hole = Features(
+        "line",
+        trace.xy,
+        trace.value,
+        trace.offsets,
+        trace.fid,
+        {},
+        Grid(lambda xy: np.full(len(xy), np.nan), 10.0),
+    )
     assert pulled(hole, role="fault trace").reason.tolist() == ["no data"]
 
 
@@ -228,9 +240,7 @@ def test_points_may_be_lifted_onto_a_raster_too():
     """Points without a height take it from a raster where they stand."""
     flat = Features.points([(2000, 100)], np.nan)
     ground = Grid(lambda xy: xy[:, 0] + xy[:, 1], cell=10.0)
-    lifted = Features(
-        "point", flat.xy, flat.value, flat.offsets, flat.fid, {}, ground
-    )
+    lifted = Features("point", flat.xy, flat.value, flat.offsets, flat.fid, {}, ground)
     assert pulled(lifted).z == pytest.approx([2100.0])
 
 
@@ -270,8 +280,12 @@ def test_measured_azimuths_are_brought_to_grid_north(north, declination, measure
 def test_measured_azimuths_without_convergence_are_refused(north):
     """Without the meridian convergence a true or magnetic azimuth is no use."""
     with pytest.raises(PicksError, match="convergence") as caught:
-        pulled(trace_with_dip(125.0), role="fault trace", azimuth_north=north,
-               layer="Traces")
+        pulled(
+            trace_with_dip(125.0),
+            role="fault trace",
+            azimuth_north=north,
+            layer="Traces",
+        )
     assert caught.value.code == "no-convergence"
     assert "source 'Traces'" in str(caught.value)
 
@@ -318,8 +332,11 @@ def test_unknown_values_are_kept_with_their_reason():
 def test_features_without_any_value_are_counted_at_the_door():
     """Lines none of whose vertices has a value are counted by reason."""
     data = Features.lines(
-        [[(0, 0, np.nan), (1, 0, np.nan)], [(0, 0, -9999), (1, 0, -9999)],
-         [(0, 0, np.nan), (1, 0, -5)]]
+        [
+            [(0, 0, np.nan), (1, 0, np.nan)],
+            [(0, 0, -9999), (1, 0, -9999)],
+            [(0, 0, np.nan), (1, 0, -5)],
+        ]
     )
     prepared = prepare_source(declared(), data, "m")
     assert dict(prepared.refused) == {"no value": 1, "null code": 1}
@@ -375,8 +392,9 @@ def test_reversed_section_gives_the_same_picks():
     rng = np.random.default_rng(3)
     vertices = [(0, 0), (3000, 900), (6000, 0), (10000, -500)]
     contours = [
-        np.column_stack([np.full(40, x), np.linspace(-2000, 2000, 40),
-                         rng.normal(-500, 50, 40)])
+        np.column_stack(
+            [np.full(40, x), np.linspace(-2000, 2000, 40), rng.normal(-500, 50, 40)]
+        )
         for x in np.linspace(200, 9700, 30)
     ]
     points = Features.points(rng.uniform([0, -2000], [10000, 2000], (200, 2)), -1.0)

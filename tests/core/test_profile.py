@@ -145,8 +145,13 @@ def test_line_shifted_for_a_trial_keeps_its_point():
 
 @pytest.mark.parametrize(
     ("x", "options"),
-    [([], {}), ([5.0], {}), ([5.0, 5.0], {}), ([], {"slope": 0.0}),
-     ([], {"through": (0.0, 0.0)})],
+    [
+        ([], {}),
+        ([5.0], {}),
+        ([5.0, 5.0], {}),
+        ([], {"slope": 0.0}),
+        ([], {"through": (0.0, 0.0)}),
+    ],
     ids=["none", "one", "one place", "level alone", "dip alone"],
 )
 def test_too_few_picks_carry_no_regional(x, options):
@@ -160,7 +165,7 @@ def test_too_few_picks_carry_no_regional(x, options):
 def test_times_are_refused_where_depths_are_needed():
     """The construction holds in depth only; times have to be converted first."""
     require_depth(Picks.empty("S4"), "section S4")
-    with pytest.raises(ConstructionError, match="section S4.*two-way times") as caught:
+    with pytest.raises(ConstructionError, match=r"section S4.*two-way times") as caught:
         require_depth(Picks.empty("S4", "time"), "section S4")
     assert caught.value.code == "time-domain"
     assert "velocity" in caught.value.remedy

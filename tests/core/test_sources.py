@@ -53,7 +53,7 @@ def test_length_units_are_those_of_their_definition(unit, metres):
 
 def test_unknown_length_unit_is_refused_with_the_known_ones():
     """A unit that is not on the list is named, and so are those that are."""
-    with pytest.raises(SourceError, match="'fathom'.*m, ft, us-ft") as caught:
+    with pytest.raises(SourceError, match=r"'fathom'.*m, ft, us-ft") as caught:
         length_factor("fathom", "m")
     assert caught.value.code == "unknown-unit"
 
@@ -234,7 +234,9 @@ def test_conversion_is_said_in_words():
     )
     for word in ("depth", "ft", "KB", "30", "elevation in m"):
         assert word in text
-    assert "one-way time in s" in conversion_text(in_time(unit="s", time_way="one"), "m")
+    assert "one-way time in s" in conversion_text(
+        in_time(unit="s", time_way="one"), "m"
+    )
 
 
 def test_points_and_lines_become_flat_arrays():

@@ -9,8 +9,14 @@ from worlds import EXPONENTIAL, joined, table
 from geomcore.fault import KnownFault, known_fault
 from geomcore.walls import assign_walls, leave_out_near_fault, tracked_gap
 
-PLANE = KnownFault(np.array([0.0, 1000.0]), np.array([0.0, -1000.0]), 0.0, -1.0, -1.0,
-                   "a plane of 45 degrees")
+PLANE = KnownFault(
+    np.array([0.0, 1000.0]),
+    np.array([0.0, -1000.0]),
+    0.0,
+    -1.0,
+    -1.0,
+    "a plane of 45 degrees",
+)
 
 
 def test_picks_beyond_the_fault_lie_in_the_hanging_wall():
@@ -30,7 +36,11 @@ def test_declared_walls_and_other_kinds_are_left_alone():
         table([495.0], [np.nan]),
     )
     assert assign_walls(picks, PLANE).wall.tolist() == [
-        "hanging wall", "", "", "footwall", "",
+        "hanging wall",
+        "",
+        "",
+        "footwall",
+        "",
     ]
 
 
@@ -56,8 +66,14 @@ def test_distance_to_the_fault_is_measured_in_the_section_plane():
 
 def test_distance_to_a_bent_fault_is_that_to_its_nearest_piece():
     """The nearest point may lie on another piece than the one at the pick's depth."""
-    bent = KnownFault(np.array([0.0, 100.0, 1000.0]), np.array([0.0, -1000.0, -1050.0]),
-                      0.0, -10.0, -0.05, "a bend")
+    bent = KnownFault(
+        np.array([0.0, 100.0, 1000.0]),
+        np.array([0.0, -1000.0, -1050.0]),
+        0.0,
+        -10.0,
+        -0.05,
+        "a bend",
+    )
     picks = table([800.0], [-1000.0])
     piece = np.array([900.0, -50.0]) / math.hypot(900.0, 50.0)
     off = np.array([700.0, 0.0])
@@ -68,8 +84,9 @@ def test_distance_to_a_bent_fault_is_that_to_its_nearest_piece():
 
 def test_only_horizon_picks_are_left_out():
     """Fault picks and cut-offs belong on the fault."""
-    picks = joined(table([500.0], [-500.0], kind="fault"),
-                   table([500.0], [-500.0], kind="cutoff"))
+    picks = joined(
+        table([500.0], [-500.0], kind="fault"), table([500.0], [-500.0], kind="cutoff")
+    )
     assert leave_out_near_fault(picks, PLANE, 50.0).used.all()
 
 
