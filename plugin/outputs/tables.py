@@ -15,6 +15,7 @@ __all__ = [
     "picks_tables",
     "predicted_horizons_table",
     "run_tables",
+    "runs_table",
     "section_lines_table",
     "trace_id",
 ]
@@ -110,7 +111,7 @@ def run_tables(run, made_at, tool_version, versions=None):
         predicted_horizons_table(stamp, _horizons_of(stamp, run.sections)),
         input_statement_table(stamp, run.statement),
     ]
-    return [*tables, _runs_table(stamp, run, tables, versions)]
+    return [*tables, runs_table(stamp, run, tables, versions)]
 
 
 def _warnings(doubts):
@@ -487,7 +488,18 @@ def _by_reason(counts):
     return "; ".join(f"{n} {why}" for why, n in counts.items()) or None
 
 
-def _runs_table(stamp, run, tables, versions):
+def runs_table(stamp, run, tables, versions=None):
+    """Row of ``runs``.
+
+    Parameters
+    ----------
+    stamp : Stamp
+    run : StudyRun
+    tables : sequence of Table
+        The other layers written, for their counts.
+    versions : dict of str to str, optional
+        Of QGIS and its parts.
+    """
     study = run.study
     document = study.to_dict()
     values = {
