@@ -329,20 +329,14 @@ def regional_and_separation(picks, fault, horizon, model, spec, given, options):
     if hang is None:
         hang, _ = extend_to_fault(hanging, fault, "hanging wall", where)
     far = _far_picks(hanging, fault, spec)
-    moved_by, regional = 0.0, None
+    moved_by, regional, given_foot = 0.0, None, foot
     for _ in range(4 if far is not None else 1):
         regional, foot = _regional(
-            footwall,
-            far,
-            moved_by,
-            fault,
-            foot if given and given.footwall else None,
-            spec,
-            where,
-            doubts,
+            footwall, far, moved_by, fault, given_foot, spec, where
         )
         separation = Separation(horizon, foot, hang)
         moved_by = model.displacement(separation.heave, separation.throw)
+    doubts += _spec_doubts(regional, spec, given_foot, far, where)
     doubts += _level_doubts(regional, footwall, where)
     result = _with_level(separation, footwall, hanging, options, tuple(doubts))
     return RegionalResult(regional, separation, result, tuple(_unique(doubts)))
@@ -359,7 +353,7 @@ def _far_picks(hanging, fault, spec):
     return (hanging.x[far], hanging.z[far], hanging.sigma[far])
 
 
-def _regional(footwall, far, moved_by, fault, foot, spec, where, doubts):
+def _regional(footwall, far, moved_by, fault, foot, spec, where):
     """Regional against the footwall cut-off, and that cut-off."""
     x, z, sigma = footwall.x, footwall.z, footwall.sigma
     if spec.footwall_within is not None:
@@ -382,13 +376,6 @@ def _regional(footwall, far, moved_by, fault, foot, spec, where, doubts):
         )
     through = (foot.x, foot.z) if foot else None
     if through and slope is None and len(x) < 1:
-        doubts.append(
-            Doubt(
-                "regional-level",
-                "no footwall picks: the regional is taken as level.",
-                where,
-            )
-        )
         slope = 0.0
     try:
         regional = fit_line(x, z, sigma, slope=slope, through=through)
@@ -420,6 +407,26 @@ def _regional(footwall, far, moved_by, fault, foot, spec, where, doubts):
         slides=True,
     )
     return regional, foot
+
+
+def _spec_doubts(regional, spec, given_foot, far, where):
+    """Doubt a regional that is not what was asked for."""
+    found = []
+    if spec.dip is None and not regional.n_picks:
+        found.append(("regional-level", "no picks tell its dip: it is taken as level."))
+    if spec.z is not None and given_foot is not None:
+        found.append(
+            (
+                "regional-z-unused",
+                f"the level {spec.z:g} given for it is not used: it goes through the "
+                f"footwall cut-off given at {given_foot.z:.1f}.",
+            )
+        )
+    if far is not None and not len(far[0]):
+        found.append(
+            ("no-far-picks", f"no hanging-wall pick lies {spec.far_from:g} beyond.")
+        )
+    return [Doubt(code, f"regional: {text}", where) for code, text in found]
 
 
 def _level_doubts(regional, footwall, where):
