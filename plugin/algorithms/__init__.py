@@ -1,0 +1,1 @@
+"""Processing algorithms: each declares, reads, calls the core once, and writes."""
