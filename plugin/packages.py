@@ -1,6 +1,7 @@
 """Which Python packages are there, what is off without them, and how to get them."""
 
 import importlib
+import re
 import sys
 from dataclasses import dataclass
 
@@ -115,13 +116,9 @@ def _too_old(package, version):
 
 
 def _numbers(version):
-    """Leading numbers of a version text: '2.1.2rc1' gives (2, 1)."""
-    numbers = []
-    for part in version.split("."):
-        if not part.isdigit():
-            break
-        numbers.append(int(part))
-    return tuple(numbers)
+    """Give the leading numbers of a version text: '2.1rc1' gives (2, 1)."""
+    found = re.match(r"\d+(\.\d+)*", version)
+    return tuple(map(int, found.group().split("."))) if found else ()
 
 
 def package_states():
