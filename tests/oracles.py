@@ -101,7 +101,7 @@ def moved_particle(fault, angle, oblique_heave, x, z):
 
 def footwall_cutoff(fault, regional):
     """Find where the regional z(x) meets the fault."""
-    x = bisected(lambda x: fault.z(x) - regional(x), -20000.0, 80000.0)
+    x = bisected(lambda x: fault.z(x) - regional(x), -20000.0, 20000.0)
     return x, regional(x)
 
 
@@ -164,8 +164,9 @@ def hand_march(start, bed, regional, angle, per_strip):
     while True:
         i = len(row)
         u = lean[0][0] + i * step
-        if u > bed[-1][0]:
+        if u > bed[-1][0] + 1e-6:
             break
+        u = min(u, bed[-1][0])
         level = (z_zero + slope * (u - heave)) / (1.0 - slope * t)
         row.append(row[i - per_strip] + between(bed, u) - level)
     return [(lean[0][0] + i * step + z * t, z) for i, z in enumerate(row)]
