@@ -4,7 +4,13 @@ import numpy as np
 
 from .errors import FrameError, GeomcoreError
 from .picks import Picks, PullOptions, pull_source
-from .section import SectionFrame, mean_strike, parse_azimuth, transport_azimuth
+from .section import (
+    SectionFrame,
+    mean_strike,
+    parallel_sections,
+    parse_azimuth,
+    transport_azimuth,
+)
 from .sources import Features
 
 __all__ = ["resolve_transport", "trace_parts"]
@@ -90,16 +96,17 @@ def resolve_transport(study, prepared, lines):
 def _transport_from_levels(study, prepared, lines, strike):
     """Take the lower block of the horizon as the hanging wall."""
     right = (strike + 90.0) % 360.0
-    votes = 0.0
-    for line in lines or ():
+    votes, options = 0.0, PullOptions(study.picks.corridor)
+    drawn = [line.vertices for line in lines or ()]
+    for i, vertices in enumerate(drawn or _trial_lines(study, prepared, right)):
         try:
-            frame = SectionFrame(line.section_id, line.vertices, right)
-            tables = [pull_source(p, frame, PullOptions()) for p in prepared.values()]
+            frame = SectionFrame(f"trial {i + 1}", vertices, right)
+            tables = [pull_source(p, frame, options) for p in prepared.values()]
         except GeomcoreError:
             continue
         for domain in ("depth", "time"):
             own = [t for t in tables if t.domain == domain]
-            table = Picks.empty(line.section_id, domain).joined(own)
+            table = Picks.empty(frame.section_id, domain).joined(own)
             votes += _lower_side(table, study.construction.horizon)
     if votes == 0:
         raise FrameError(
@@ -113,6 +120,16 @@ def _transport_from_levels(study, prepared, lines, strike):
         f"normal to the mean strike {strike:.1f}, towards the lower block of "
         f"{study.construction.horizon}",
     )
+
+
+def _trial_lines(study, prepared, transport):
+    """Lines across the fault, as long to either side, where none are drawn yet."""
+    spec = study.sections.parallel
+    trace = trace_parts(prepared, "fault trace") or trace_parts(prepared, "cut-off")
+    if spec is None or not trace:
+        return ()
+    length = max(spec.footwall_length, spec.hanging_wall_length)
+    return parallel_sections(trace, transport, spec.spacing, spec.count, length, length)
 
 
 def _lower_side(picks, horizon):
