@@ -316,9 +316,8 @@ def test_convergence_turns_grid_into_true_north(
     qgis_app, crs, x, y, expected, tolerance
 ):
     """True azimuth = grid azimuth + convergence, either side of the equator."""
-    from qgis.core import QgsCoordinateReferenceSystem, QgsCoordinateTransformContext
-
     from heaveline.plugin.north import convergence_of
+    from qgis.core import QgsCoordinateReferenceSystem, QgsCoordinateTransformContext
 
     of = convergence_of(
         QgsCoordinateReferenceSystem(crs), QgsCoordinateTransformContext()
@@ -332,7 +331,7 @@ def test_convergence_turns_grid_into_true_north(
 
 @pytest.fixture
 def sample(tmp_path):
-    """A stand-in for the sample folder: project, study, data, and its makers' scripts."""
+    """Make a stand-in for the sample folder: project, study, data, and scripts."""
     folder = tmp_path / "source"
     (folder / "data").mkdir(parents=True)
     for name in ("sample.qgz", "study.json", "make_sample.py", "data/a.gpkg"):
