@@ -84,7 +84,7 @@ def wall_guide(picks, other=None):
         return known_fault(picks)[0]
     except PicksError as error:
         if error.code == "wrong-side":
-            raise
+            return None  # the section is refused for it when it is constructed
     for table in (picks, other):
         if table is None:
             continue

@@ -1,4 +1,4 @@
-"""The march: known faults recovered, checked by hand, by area and by its error growth."""
+"""The march: faults recovered, checked by hand, by area, by the growth of errors."""
 
 import math
 from dataclasses import replace
@@ -182,7 +182,7 @@ def test_horizon_of_the_predicted_fault_is_the_one_that_made_it(
 
 
 def test_further_horizon_shares_the_oblique_heave():
-    """A deeper pre-growth horizon, predicted from the fault, is where particles went."""
+    """A deeper pre-growth horizon of the fault is where its particles went."""
     world = World(EXPONENTIAL, 20.0)
     made = predict_fault(**direct_inputs(world))
     deeper = line_through(made.regional.x0, made.regional.z0 - 400.0, 0.0)
