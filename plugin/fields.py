@@ -198,6 +198,13 @@ def _pick_fields(*vertical):
             "where none was given.",
         ),
         *vertical,
+        _real("sigma_x", "Sigma x", f"One standard deviation of x, {_UNIT}."),
+        _real(
+            "correlation",
+            "Correlation length",
+            "Length over which the errors of neighbouring picks of the source go "
+            f"together, {_UNIT}; 0 where they are independent.",
+        ),
         FieldSpec(
             "used", "boolean", "Used", "Whether the pick enters the construction."
         ),

@@ -13,6 +13,7 @@ from .wkb import parse_wkb
 __all__ = ["read_picks", "read_traces"]
 
 _PICK_NUMBERS = ("x", "distance", "off_section", "dip")
+_PICK_ERRORS = ("sigma_x", "correlation")
 _PICK_TEXTS = ("section_id", "kind", "name", "wall", "reason", "source")
 
 
@@ -65,11 +66,13 @@ def _read_columns(layer, names, crs, transform_context, feedback, where):
 def _picks_of(layer, domain, crs, transform_context, feedback):
     where = f"picks layer '{layer_name(layer)}'"
     sigma = "sigma_twt" if domain == "time" else "sigma_z"
-    names = [*_PICK_NUMBERS, *_PICK_TEXTS, "used", "source_fid", sigma]
+    names = [*_PICK_NUMBERS, *_PICK_TEXTS, "used", "source_fid", sigma, *_PICK_ERRORS]
     names += ["twt_ms"] if domain == "time" else []
     wkb, fid, raw = _read_columns(layer, names, crs, transform_context, feedback, where)
     columns = _pick_columns(raw, fid, where)
     columns["sigma_z"] = _number(raw, sigma, fid, where, missing=0.0)
+    for name in _PICK_ERRORS:
+        columns[name] = _number(raw, name, fid, where, missing=0.0)
     if domain == "time":
         columns["z"] = -_number(raw, "twt_ms", fid, where)
     else:

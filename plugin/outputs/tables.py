@@ -211,6 +211,8 @@ def _pick_rows(stamp, frame, picks, labels):
     columns["source_layer"] = [labels.get(k, k) for k in columns["source"]]
     columns["source_fid"] = [_fid(f) for f in picks.source_fid.tolist()]
     columns["sigma_twt" if in_time else "sigma_z"] = _column(picks.sigma_z)
+    columns["sigma_x"] = _column(picks.sigma_x)
+    columns["correlation"] = _column(picks.correlation)
     if in_time:
         columns["twt_ms"] = _column(picks.twt_ms)
         places = xy
