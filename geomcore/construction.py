@@ -5,8 +5,10 @@ from typing import Optional
 
 import numpy as np
 
+from .compaction import check_compaction
 from .doubts import march_doubts
 from .errors import ConstructionError
+from .fault import ASSUMED_GAP
 from .fitting import solve_by_fit
 from .kinematics import from_shear_frame
 from .problem import MarchOptions, Problem, bed_from, solve_march
@@ -69,7 +71,8 @@ class FaultTrace:
 class MarchTable:
     """The march one row per strip end, to be checked by hand.
 
-    F = F_origin + B - R_origin on every row; in the shear frame u replaces x.
+    F = F_origin + B - R_origin + thinning on every row; in the shear frame u
+    replaces x.
 
     Parameters
     ----------
@@ -77,7 +80,9 @@ class MarchTable:
     x, u : ndarray (n,)
         Place of the fault point, and the place of its column in the shear frame.
     bed, regional, increment, fault : ndarray (n,)
-        B there, R one heave inwards, their difference, and F.
+        B there, R one heave inwards, what is added to F_origin, and F.
+    thinning : ndarray (n,) or float
+        Loss of column thickness by compaction, part of the increment.
     """
 
     strip: np.ndarray
@@ -87,6 +92,7 @@ class MarchTable:
     regional: np.ndarray
     increment: np.ndarray
     fault: np.ndarray
+    thinning: object = 0.0
 
 
 @dataclass(frozen=True, eq=False)
@@ -114,6 +120,7 @@ class Prediction:
     doubts : tuple of Doubt
     detail : FitDetail or None
         What the fit has to tell besides.
+    compaction : Compaction or None
     """
 
     section_id: str
@@ -129,6 +136,7 @@ class Prediction:
     deepest_z: float
     doubts: tuple = field(default=())
     detail: object = None
+    compaction: object = None
 
     @property
     def strips(self):
@@ -240,6 +248,7 @@ def predict_fault(
         float(solution.z[-1]),
         tuple(march_doubts(problem, solution, trace, detachment)),
         solution.detail,
+        problem.options.compaction,
     )
 
 
@@ -249,9 +258,10 @@ def check_problem(problem):
     Raises
     ------
     ConstructionError
-        If the separation is reverse or on the wrong side, or the shear direction is
-        parallel to the fault.
+        If the separation is reverse or on the wrong side, the shear direction is
+        parallel to the fault, or compaction does not go with the model.
     """
+    check_compaction(problem.options.compaction, problem.model, problem.where)
     _check_separation(problem)
     _check_fault_in_frame(problem)
 
@@ -322,7 +332,8 @@ def _trace(problem, solution, x, z):
     strip = np.r_[np.zeros(n, int), solution.strip]
     state = np.full(len(full_x), "predicted", dtype=object)
     first = strip == 0
-    state[first] = np.where(fault.is_known(full_x[first]), "known", "assumed")
+    known = fault.is_known(full_x[first], ASSUMED_GAP * problem.separation.heave)
+    state[first] = np.where(known, "known", "assumed")
     state[:n] = "known"
     if solution.reach is not None:
         state[n:][~solution.reach & ~first[n:]] = "out of reach"
@@ -342,15 +353,16 @@ def _table(solution, x):
     last = np.flatnonzero(np.r_[np.diff(strip) > 0, True])
     rows = last[strip[last] > 0] if strip[-1] > 0 else last
     rows = np.union1d([solution.start - 1], rows)
-    increment = solution.bed_z - solution.regional_z
+    thinning = np.broadcast_to(solution.thinning, solution.u.shape)
     return MarchTable(
         strip[rows],
         x[rows],
         solution.u[rows],
         solution.bed_z[rows],
         solution.regional_z[rows],
-        increment[rows],
+        solution.increment[rows],
         solution.z[rows],
+        thinning[rows],
     )
 
 
@@ -358,14 +370,14 @@ def _detachment(problem, solution):
     """Give the detachment level where the bed is back at its far position, or None.
 
     Over one strip the bed has to lie within 2 sigma of the regional moved out by
-    the heave, R~(u - H): over a level detachment it comes back there, not to the
-    regional itself (methods.md section 1).
+    the heave, R~(u - H), less what compaction takes: over a level detachment it comes
+    back there, not to the regional itself (methods.md section 1).
     """
     last = slice(len(solution.u) - solution.start, None)
-    u, origin = solution.u[last], solution.regional_z[last]
+    u = solution.u[last]
     sigma = np.interp(u, solution.bed.x, solution.bed.sigma)
     from_regional = problem.regional.sigma_at(u - problem.oblique_heave)
     spread = np.maximum(np.hypot(sigma, from_regional), 1e-6)
-    if np.all(np.abs(solution.bed_z[last] - origin) <= 2.0 * spread):
+    if np.all(np.abs(solution.increment[last]) <= 2.0 * spread):
         return float(solution.z[last].mean())
     return None

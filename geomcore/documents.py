@@ -90,6 +90,7 @@ def _is_whole(value):
 _KINDS = {
     float: ("a number", _is_number),
     int: ("a whole number", _is_whole),
+    bool: ("true or false", lambda value: isinstance(value, bool)),
     str: ("a text", lambda value: isinstance(value, str)),
     tuple: ("a list", lambda value: isinstance(value, (list, tuple))),
 }

@@ -3,6 +3,7 @@
 import numpy as np
 
 from .errors import Doubt
+from .fault import ASSUMED_GAP
 
 __all__ = ["march_doubts"]
 
@@ -29,6 +30,7 @@ def march_doubts(problem, solution, trace, detachment):
         *_of_start(problem),
         *_of_bed(problem),
         *_of_shear(problem),
+        *_of_compaction(problem),
         *_of_trace(trace),
         *_of_reach(solution, detachment),
         *_of_strips(problem, solution),
@@ -37,12 +39,19 @@ def march_doubts(problem, solution, trace, detachment):
 
 
 def _of_start(problem):
-    hang, fault = problem.separation.hanging_wall, problem.fault
+    foot, hang = problem.separation.footwall, problem.separation.hanging_wall
+    fault, longest = problem.fault, ASSUMED_GAP * problem.separation.heave
     if not fault.is_known(hang.x):
         yield (
             "assumed-piece",
             "the fault between its last known point and the hanging-wall cut-off is "
             f"assumed: straight, by {fault.below_from}.",
+        )
+    elif not fault.is_known(np.linspace(foot.x, hang.x, 41), longest).all():
+        yield (
+            "assumed-piece",
+            "no point of the fault is known over more than half the heave between the "
+            "cut-offs; it is assumed straight there.",
         )
 
 
@@ -94,6 +103,15 @@ def _of_shear(problem):
         )
 
 
+def _of_compaction(problem):
+    if problem.options.compaction is not None and problem.model.shear_angle != 0:
+        yield (
+            "compaction-approximate",
+            "the columns were compacted along the inclined shear lines, while rock "
+            "compacts along the vertical: an approximation.",
+        )
+
+
 def _of_trace(trace):
     dip = np.degrees(np.arctan2(-np.diff(trace.z), np.diff(trace.x)))
     predicted = trace.strip[1:] > 0
@@ -133,9 +151,9 @@ def _of_strips(problem, solution):
     u, bed_z = solution.u[beyond], solution.bed_z[beyond]
     sigma = np.interp(u, solution.bed.x, solution.bed.sigma)
     # one heave back: a bed over a level detachment ends there, not at R itself
-    level = solution.regional_z[beyond]
+    rise = solution.increment[beyond]
     spread = np.hypot(sigma, problem.regional.sigma_at(u))
-    above = bed_z - level > 3.0 * spread + 1e-3 * problem.separation.throw
+    above = rise > 3.0 * spread + 1e-3 * problem.separation.throw
     if above.any():
         at = u[above][0] + bed_z[above][0] * problem.tan
         yield (

@@ -127,7 +127,8 @@ def solve_by_fit(problem, smoothness=None):
     Raises
     ------
     ConstructionError
-        If the model is not linear in the fault, or the rows do not decide it.
+        If the model or compaction is not linear in the fault, or the rows do not
+        decide it.
     """
     if not isinstance(problem.model, ConstantHeave):
         raise ConstructionError(
@@ -135,6 +136,14 @@ def solve_by_fit(problem, smoothness=None):
             f"the fit holds for constant heave only, not for {problem.model.label}.",
             problem.where,
             "Use the march.",
+        )
+    if problem.options.compaction is not None:
+        raise ConstructionError(
+            "fit-not-linear",
+            "with compaction the bed no longer depends linearly on the fault, so the "
+            "fit does not apply.",
+            problem.where,
+            "Use the march, or leave compaction out.",
         )
     u, beds, points = section_rows(problem)
     system = assemble(u, beds, points)

@@ -2,6 +2,7 @@
 
 import numpy as np
 
+from .compaction import check_compaction, check_surfaces
 from .errors import ConstructionError
 from .kinematics import ConstantHeave, from_shear_frame, to_shear_frame
 from .profile import Profile
@@ -10,14 +11,24 @@ __all__ = ["forward_horizon", "predict_horizon"]
 
 
 def predict_horizon(
-    trace_x, trace_z, regional, oblique_heave, shear_angle, samples=400
+    trace_x,
+    trace_z,
+    regional,
+    oblique_heave,
+    shear_angle,
+    samples=400,
+    compaction=None,
 ):
     """Predict a horizon from the fault by constant heave (see `forward_horizon`)."""
     model = ConstantHeave(shear_angle)
-    return forward_horizon(trace_x, trace_z, regional, oblique_heave, model, samples)
+    return forward_horizon(
+        trace_x, trace_z, regional, oblique_heave, model, samples, compaction
+    )
 
 
-def forward_horizon(trace_x, trace_z, regional, displacement, model, samples=400):
+def forward_horizon(
+    trace_x, trace_z, regional, displacement, model, samples=400, compaction=None
+):
     """Predict a horizon in the hanging wall from the fault.
 
     Parameters
@@ -33,6 +44,8 @@ def forward_horizon(trace_x, trace_z, regional, displacement, model, samples=400
         Kinematic model.
     samples : int
         Points of the result, besides those at the fault's own vertices.
+    compaction : Compaction, optional
+        Columns keep their solid thickness.
 
     Returns
     -------
@@ -45,13 +58,16 @@ def forward_horizon(trace_x, trace_z, regional, displacement, model, samples=400
     ------
     ConstructionError
         If the regional does not meet the fault, the fault is not given for one
-        displacement beyond that, or the model has no solution.
+        displacement beyond that, the model has no solution or does not go with
+        compaction, or a bed lies above its sediment surface.
 
     Notes
     -----
     B(X) = R(x) + F(X) - F(x) with X the arrival of the column that stood at x, all
-    in the shear frame (eqs. 3 and 5 of methods.md).
+    in the shear frame (eqs. 3 and 5 of methods.md), less what the column thins by
+    compaction.
     """
+    check_compaction(compaction, model)
     trace_z = np.asarray(trace_z, dtype=float)
     fu = to_shear_frame(trace_x, trace_z, model.shear_angle)
     if np.any(np.diff(fu) <= 0):
@@ -80,6 +96,9 @@ def forward_horizon(trace_x, trace_z, regional, displacement, model, samples=400
         )
     u, arrived = u[inside], arrived[inside]
     z = level(u) + fault(arrived) - fault(u)
+    if compaction is not None:
+        z = z - compaction.thinning_above(level(u), fault(u), fault(arrived))
+        check_surfaces(compaction, z, level(u), 1e-6 * displacement)
     x = from_shear_frame(arrived, z, model.shear_angle)
     foot_z = float(fault(u_foot))
     return (

@@ -5,10 +5,11 @@ from typing import Optional
 
 import numpy as np
 
+from .compaction import Compaction, check_surfaces
 from .errors import ConstructionError
 from .kinematics import to_shear_frame
 from .profile import Profile, pool_to_increasing
-from .stepping import march
+from .stepping import at_origin, march
 
 __all__ = [
     "MarchOptions",
@@ -37,6 +38,8 @@ class MarchOptions:
     detachment_z, detachment_sigma : float
         Detachment level known from elsewhere and its sigma; the fit takes it as a
         soft constraint.
+    compaction : Compaction, optional
+        Columns keep their solid thickness; the march only.
     """
 
     samples_per_strip: int = 40
@@ -44,6 +47,7 @@ class MarchOptions:
     robust: bool = False
     detachment_z: Optional[float] = None
     detachment_sigma: float = 50.0
+    compaction: Optional[Compaction] = None
 
 
 @dataclass(frozen=True, eq=False)
@@ -133,6 +137,10 @@ class Solution:
         False where a node has no data near it.
     detail : object, optional
         What else the solver has to tell (`FitDetail`).
+    thinning : ndarray (n,) or float
+        By how much the column at the node is thinner than when the fault moved.
+    gains : tuple of ndarray (n,), optional
+        dF/dF(origin) and dF/dB at the nodes, where they are not 1.
     """
 
     u: np.ndarray
@@ -145,6 +153,25 @@ class Solution:
     start: int
     reach: object = None
     detail: object = None
+    thinning: object = 0.0
+    gains: object = None
+
+    @property
+    def increment(self):
+        """F at each node less F at its origin; the start piece has none."""
+        return self.bed_z - self.regional_z + self.thinning
+
+    def carried(self, errors):
+        """Carry small errors of the bed at the nodes (n, k) through the march."""
+        start = np.zeros((self.start, errors.shape[1]))
+        step = None
+        if self.gains is not None:
+            of_fault, of_bed = (g[:, None] for g in self.gains)
+
+            def step(inner, nodes):
+                return of_fault[nodes] * inner + of_bed[nodes] * errors[nodes]
+
+        return march(self.origin_index, self.origin_fraction, start, errors, step)
 
     @property
     def strip(self):
@@ -225,8 +252,47 @@ def solve_march(problem):
     bed_z = np.interp(u, bed.x, bed.z)
     regional_z = problem.regional_at(origin)
     start = start_piece(problem, u[: m + 1])
-    z = march(index, fraction, start, bed_z - regional_z)
-    return Solution(u, z, index, fraction, bed_z, regional_z, bed, m + 1)
+    if problem.options.compaction is None:
+        z = march(index, fraction, start, bed_z - regional_z)
+        return Solution(u, z, index, fraction, bed_z, regional_z, bed, m + 1)
+    _check_surfaces(problem, bed, u[m:], origin[m:], bed_z[m:], regional_z[m:])
+    return _compacting(
+        problem.options.compaction, u, index, fraction, start, bed_z, regional_z, bed
+    )
+
+
+def _compacting(compaction, u, index, fraction, start, bed_z, regional_z, bed):
+    """March columns that keep their solid thickness."""
+    increment = bed_z - regional_z
+
+    def step(inner, nodes):
+        thinner = compaction.thinning(bed_z[nodes], regional_z[nodes], inner)
+        return inner + increment[nodes] + thinner
+
+    z = march(index, fraction, start, increment, step)
+    inner = at_origin(index, fraction, z)
+    thinning = z - inner - increment
+    thinning[: len(start)] = 0.0
+    gains = compaction.gains(bed_z, inner, z)
+    return Solution(
+        u,
+        z,
+        index,
+        fraction,
+        bed_z,
+        regional_z,
+        bed,
+        len(start),
+        thinning=thinning,
+        gains=gains,
+    )
+
+
+def _check_surfaces(problem, bed, u, origin, bed_z, regional_z):
+    """Refuse beds above the sediment surface by more than noise could lift them."""
+    sigma = np.hypot(np.interp(u, bed.x, bed.sigma), problem.regional.sigma_at(origin))
+    slack = 3.0 * sigma + 1e-3 * problem.separation.throw
+    check_surfaces(problem.options.compaction, bed_z, regional_z, slack, problem.where)
 
 
 def bed_from(cutoff, bed):

@@ -4,6 +4,7 @@ import json
 from dataclasses import dataclass, field, replace
 from typing import Optional
 
+from .compaction import compaction_from
 from .documents import read_list, read_object, require, write_object
 from .errors import StudyError
 from .kinematics import MODELS, model_named
@@ -14,6 +15,7 @@ __all__ = [
     "FORMAT",
     "SOLVERS",
     "VERSION",
+    "CompactionSpec",
     "ConstructionSpec",
     "HorizonSpec",
     "OutputsSpec",
@@ -179,6 +181,31 @@ class HorizonSpec:
 
 
 @dataclass(frozen=True)
+class CompactionSpec:
+    """Compaction of the hanging wall; either a known law or own numbers.
+
+    Parameters
+    ----------
+    surface_now_z, surface_then_z : float
+        Elevation of the sediment surface now, and when the fault moved.
+    law : str
+        Name of a published porosity law (`compaction.PRESETS`).
+    surface_porosity, decay : float, optional
+        Own law instead: phi0 (a fraction) and c (per length unit of the study) of
+        phi0 exp(-c depth).
+    approximate : bool
+        Run with inclined shear too, along the shear lines; marked by a doubt.
+    """
+
+    surface_now_z: float
+    surface_then_z: float
+    law: str = ""
+    surface_porosity: Optional[float] = None
+    decay: Optional[float] = None
+    approximate: bool = False
+
+
+@dataclass(frozen=True)
 class ConstructionSpec:
     """What is constructed and how.
 
@@ -204,6 +231,8 @@ class ConstructionSpec:
         Detachment level known from elsewhere; a soft constraint of the fit.
     regional : RegionalSpec
     further_horizons : tuple of HorizonSpec
+    compaction : CompactionSpec, optional
+        Columns keep their solid thickness; the march with vertical shear only.
     """
 
     horizon: str
@@ -218,6 +247,7 @@ class ConstructionSpec:
     detachment_sigma: float = 50.0
     regional: RegionalSpec = field(default_factory=RegionalSpec)
     further_horizons: tuple = ()
+    compaction: Optional[CompactionSpec] = None
 
     def __post_init__(self):
         where = "construction"
@@ -305,6 +335,7 @@ class Study:
                 "Sources: " + ", ".join(keys) + ".",
             )
         model_named(self.construction.model, shear_angle=self.construction.shear_angle)
+        compaction_from(self.construction.compaction, self.length_unit)
 
     @classmethod
     def from_dict(cls, document):
@@ -388,6 +419,10 @@ def _read_construction(document):
         if "regional" in document:
             given["regional"] = read_object(
                 RegionalSpec, document["regional"], "construction.regional"
+            )
+        if document.get("compaction") is not None:
+            given["compaction"] = read_object(
+                CompactionSpec, document["compaction"], "construction.compaction"
             )
         given["fit_horizons"] = tuple(read_list(document, "fit_horizons", where))
         given["further_horizons"] = tuple(

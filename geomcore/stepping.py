@@ -4,10 +4,19 @@ import numpy as np
 
 from .errors import ConstructionError
 
-__all__ = ["hat_matrix", "march"]
+__all__ = ["at_origin", "hat_matrix", "march"]
 
 
-def march(origin_index, origin_fraction, start, increment):
+def at_origin(origin_index, origin_fraction, values):
+    """Read values at the nodes at the origins of columns, straight between nodes."""
+    shape = (-1,) + (1,) * (np.ndim(values) - 1)
+    f = origin_fraction.reshape(shape)
+    if not f.any():
+        return values[origin_index]
+    return (1 - f) * values[origin_index] + f * values[origin_index + 1]
+
+
+def march(origin_index, origin_fraction, start, increment, step=None):
     """Carry the fault outwards strip by strip.
 
     Parameters
@@ -21,6 +30,9 @@ def march(origin_index, origin_fraction, start, increment):
     increment : ndarray (n, ...)
         B at each node minus R at its origin; the first m rows are not used.
         Further axes run through together (several beds, or derivatives).
+    step : callable, optional
+        ``step(inner, nodes)`` gives F at a slice of nodes from F at their origins,
+        where it is more than that plus the increment.
 
     Returns
     -------
@@ -37,7 +49,6 @@ def march(origin_index, origin_fraction, start, increment):
     fault = np.empty((n, *np.shape(increment)[1:]))
     done = len(start)
     fault[:done] = start
-    shape = (-1,) + (1,) * (np.ndim(increment) - 1)
     needed = origin_index + (origin_fraction > 0)
     while done < n:
         stop = done + int(np.argmax(np.r_[needed[done:] >= done, True]))
@@ -45,9 +56,9 @@ def march(origin_index, origin_fraction, start, increment):
             raise ConstructionError(
                 "no-progress", "a column has not moved: its origin lies beyond itself."
             )
-        i, f = origin_index[done:stop], origin_fraction[done:stop].reshape(shape)
-        inner = fault[i] if not f.any() else (1 - f) * fault[i] + f * fault[i + 1]
-        fault[done:stop] = inner + increment[done:stop]
+        nodes = slice(done, stop)
+        inner = at_origin(origin_index[nodes], origin_fraction[nodes], fault)
+        fault[nodes] = inner + increment[nodes] if step is None else step(inner, nodes)
         done = stop
     return fault
 

@@ -9,6 +9,7 @@ from typing import Optional
 
 import numpy as np
 
+from .compaction import compaction_from
 from .construction import MarchOptions, predict_fault
 from .cutoffs import (
     CutoffOptions,
@@ -123,6 +124,8 @@ class GivenTrace:
     regional : Regional
         Of that horizon.
     oblique_heave, shear_angle : float
+    compaction : Compaction or None
+        That of the construction; further horizons compact with it.
     """
 
     x: np.ndarray
@@ -131,6 +134,7 @@ class GivenTrace:
     regional: object
     oblique_heave: float
     shear_angle: float
+    compaction: object = None
 
     @classmethod
     def of(cls, prediction):
@@ -142,6 +146,7 @@ class GivenTrace:
             prediction.regional,
             prediction.oblique_heave,
             prediction.model.shear_angle,
+            prediction.compaction,
         )
 
 
@@ -627,6 +632,7 @@ def _predict(study, frame, picks, fault, given, options):
         spec.robust,
         spec.detachment_z,
         spec.detachment_sigma,
+        compaction_from(spec.compaction, study.length_unit),
     )
     others, doubts = _fit_horizons(spec, picks, fault, model, options)
     prediction = predict_fault(
@@ -724,7 +730,12 @@ def horizon_from_trace(spec, picks, given):
     """
     regional = _regional_of(spec, picks, given)
     profile, foot, hang = predict_horizon(
-        given.x, given.z, regional, given.oblique_heave, given.shear_angle
+        given.x,
+        given.z,
+        regional,
+        given.oblique_heave,
+        given.shear_angle,
+        compaction=given.compaction,
     )
     bed = profile_from_picks(picks.of("horizon", spec.name, "hanging wall"))
     miss = bed.z - profile(bed.x)
