@@ -100,7 +100,9 @@ class TextRuler:
         if key not in self._widths:
             from matplotlib.font_manager import FontProperties
 
-            font = FontProperties(self.families, style, weight=weight, size=size)
+            font = FontProperties(
+                family=self.families, style=style, weight=weight, size=size
+            )
             drawable = self.shown(text).replace(r"\$", "$")
             renderer = self._canvas.get_renderer()
             wide = renderer.get_text_width_height_descent(drawable, font, False)[0]
@@ -372,9 +374,10 @@ class FreePlaces:
                 return place
         return None
 
-    def _cells_between(self, start, end):
+    def _cells_of_leader(self, start, end):
+        """Give the cells of a leader but for its first few points, where many start."""
         span = np.hypot(end[0] - start[0], end[1] - start[1])
-        f = np.linspace(0.0, 1.0, int(span / self.CELL) + 2)
+        f = np.linspace(min(6.0 / max(span, 1e-9), 1.0), 1.0, int(span / self.CELL) + 2)
         column = (start[0] + f * (end[0] - start[0])) / self.CELL
         row = (start[1] + f * (end[1] - start[1])) / self.CELL
         rows, columns = self._data.shape
@@ -384,11 +387,11 @@ class FreePlaces:
         )
 
     def _crosses_label(self, start, end):
-        return bool(self._labels[self._cells_between(start, end)].any())
+        return bool(self._labels[self._cells_of_leader(start, end)].any())
 
     def _take_leader(self, start, end):
         """Keep further labels off a leader."""
-        self._labels[self._cells_between(start, end)] = True
+        self._labels[self._cells_of_leader(start, end)] = True
 
 
 def nearest_of_box(point, corner, width, height):

@@ -370,7 +370,9 @@ def _draw_ends(page, view, ruler, ends, top):
 
 
 def save_section_figure(figure, path_stem, formats=FORMATS, dpi=200):
-    """Write a figure in several formats: all of them whole, or none.
+    """Write a figure in several formats, every file whole.
+
+    No file is replaced before all of them are drawn.
 
     Parameters
     ----------
@@ -427,14 +429,15 @@ def _rendered(figure, kind, dpi):
     """Give the bytes of a figure in one format."""
     buffer = io.BytesIO()
     figure.savefig(buffer, format=kind, dpi=dpi, metadata=_metadata(figure, kind))
-    data = buffer.getvalue()
-    return (
-        _simple_fonts(data.decode("utf-8")).encode("utf-8") if kind == "svg" else data
-    )
+    if kind != "svg":
+        return buffer.getvalue()
+    svg = buffer.getvalue().decode("utf-8")
+    tag = re.compile('<text [^>]*style="[^"]*"')
+    return tag.sub(lambda m: _simple_fonts(m.group()), svg).encode("utf-8")
 
 
-def _simple_fonts(svg):
-    """Write fonts as single properties: Qt, and so QGIS layouts, knows no shorthand."""
+def _simple_fonts(tag):
+    """Write a font as single properties: Qt (QGIS layouts) knows no shorthand."""
 
     def simple(match):
         words, size, families = match.groups()
@@ -447,7 +450,7 @@ def _simple_fonts(svg):
             parts.append(f"{name}: {word}")
         return "; ".join(parts)
 
-    return re.sub(r"font: ((?:[\w-]+ )*)([\d.]+)px ([^;\"]+)", simple, svg)
+    return re.sub(r"font: ((?:[\w-]+ )*)([\d.]+)px ([^;\"]+)", simple, tag)
 
 
 def _metadata(figure, kind):
