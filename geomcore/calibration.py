@@ -83,10 +83,12 @@ def _fine(angles, chi2):
     l0 = (fine - x1) * (fine - x2) / ((x0 - x1) * (x0 - x2))
     l1 = (fine - x0) * (fine - x2) / ((x1 - x0) * (x1 - x2))
     l2 = (fine - x0) * (fine - x1) / ((x2 - x0) * (x2 - x1))
-    # chi-square is near a parabola between its samples; where infinities cut the
-    # curve, a gap wider than two samples is not bridged
+    # near its minimum the curve is close to a parabola; far up its steep sides a
+    # parabola would overshoot, and where angles have no solution nothing is bridged
     inside = np.interp(fine, angles, (~finite).astype(float)) < 0.5
     values = l0 * c[k - 1] + l1 * c[k] + l2 * c[k + 1]
+    low = np.maximum(np.maximum(c[k - 1], c[k]), c[k + 1]) < c.min() + 100.0
+    values = np.where(low, values, np.interp(fine, a, c))
     return fine[inside], values[inside]
 
 

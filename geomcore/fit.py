@@ -18,6 +18,7 @@ __all__ = [
     "FitSystem",
     "PickResiduals",
     "assemble",
+    "best_smoothness",
     "solve_fit",
     "straight_evidence",
 ]
@@ -251,12 +252,21 @@ def _evidence(log_weight, normal, penalty, right, square, n):
     return -0.5 * (misfit + log_det - (n - 2) * log_weight)
 
 
-def _best_smoothness(normal, penalty, right, square):
-    """Give the log weight of largest marginal likelihood: a scan, then refined."""
-    n = len(right)
-    # the scale at which data and curvature weigh the same
-    scale = np.log(np.trace(normal) / np.trace(penalty))
-    grid = scale + np.arange(-12.0, 22.1, 1.5)
+def best_smoothness(normal, penalty, right, square, n, near=None):
+    """Give the log weight of largest marginal likelihood: a scan, then refined.
+
+    Parameters
+    ----------
+    normal, penalty : ndarray (m, m)
+        Normal matrix of the data (and of any priors), and of the curvature rows.
+    right : ndarray (m,)
+    square : float
+        Sum of squares of the data.
+    n : int
+        Number of nodes the penalty acts on.
+    near : float, optional
+        Log weight of a like system; only its neighbourhood is searched.
+    """
 
     def value(log_weight):
         try:
@@ -264,13 +274,22 @@ def _best_smoothness(normal, penalty, right, square):
         except np.linalg.LinAlgError:
             return -np.inf
 
-    values = np.array([value(w) for w in grid])
-    best = int(np.argmax(values))
+    if near is not None:
+        return _golden(value, near - 2.0, near + 2.0, 8)
+    # the scale at which data and curvature weigh the same
+    scale = np.log(np.trace(normal) / np.trace(penalty))
+    grid = scale + np.arange(-12.0, 22.1, 1.5)
+    best = int(np.argmax([value(w) for w in grid]))
     low, high = grid[max(best - 1, 0)], grid[min(best + 1, len(grid) - 1)]
+    return _golden(value, low, high, 14)
+
+
+def _golden(value, low, high, steps):
+    """Give the place of the maximum by golden section."""
     golden = 0.5 * (np.sqrt(5.0) - 1.0)
     a, b = high - golden * (high - low), low + golden * (high - low)
     fa, fb = value(a), value(b)
-    for _ in range(14):
+    for _ in range(steps):
         if fa > fb:
             high, b, fb = b, a, fa
             a = high - golden * (high - low)
@@ -323,7 +342,7 @@ def solve_fit(system, smoothness=None, robust=False):
         a, b = system.matrix * weight[:, None], system.right * weight
         normal, right, square = a.T @ a, a.T @ b, float(b @ b)
         log_weight = (
-            _best_smoothness(normal, penalty, right, square)
+            best_smoothness(normal, penalty, right, square, len(right))
             if smoothness is None
             else np.log(smoothness)
         )

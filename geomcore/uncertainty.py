@@ -10,7 +10,13 @@ from .problem import solve_march
 from .profile import Profile
 from .stepping import hat_matrix, march
 
-__all__ = ["ErrorColumns", "error_columns", "solution_sigma"]
+__all__ = [
+    "ErrorColumns",
+    "error_columns",
+    "moved_problem",
+    "parameter_roots",
+    "solution_sigma",
+]
 
 
 @dataclass(frozen=True, eq=False)
@@ -120,8 +126,8 @@ def _regional_columns(problem, solution, x):
     )
     names = ("level", "slope")
     effect = [_difference(problem, solution, x, n, s) for n, s in zip(names, steps)]
-    values, vectors = np.linalg.eigh([[a, b], [b, c]])
-    return np.column_stack(effect) @ (vectors * np.sqrt(np.maximum(values, 0.0)))
+    _, root = parameter_roots(problem)
+    return np.column_stack(effect) @ root[:2, :2]
 
 
 def _single_errors(problem):
@@ -139,7 +145,7 @@ def _single_errors(problem):
 def _difference(problem, solution, x, name, step):
     """Change of F at fixed x with a parameter, per unit of it."""
     up, down = (
-        np.interp(x, *_solve_again(_moved(problem, name, way * step), solution))
+        np.interp(x, *_solve_again(moved_problem(problem, name, way * step), solution))
         for way in (1, -1)
     )
     return (up - down) / (2.0 * step)
@@ -155,8 +161,37 @@ def _solve_again(problem, solution):
     return np.maximum.accumulate(x), moved.z
 
 
-def _moved(problem, name, step):
-    """Move one parameter; found cut-offs slide along the fault."""
+def parameter_roots(problem):
+    """Give the parameters of a horizon and a root of their covariance.
+
+    Returns
+    -------
+    names : list of str
+        For `moved_problem`.
+    root : ndarray (k, k)
+        ``root @ pulls`` are the shifts of the parameters for independent unit pulls.
+    """
+    singles = [e for e in _single_errors(problem) if e[0] != "angle"]
+    names = ["level", "slope"] + [name for name, _, _ in singles]
+    a, b, c = problem.regional.covariance
+    values, vectors = np.linalg.eigh([[a, b], [b, c]])
+    root = np.zeros((len(names), len(names)))
+    root[:2, :2] = vectors * np.sqrt(np.maximum(values, 0.0))
+    root[range(2, len(names)), range(2, len(names))] = [s for _, s, _ in singles]
+    return names, root
+
+
+def moved_problem(problem, name, step):
+    """Move one parameter of a horizon; found cut-offs slide along the fault.
+
+    Parameters
+    ----------
+    problem : Problem
+    name : str
+        ``level`` or ``slope`` of the regional, ``footwall_x``, ``hanging_wall_x``,
+        ``hanging_wall_z``, or ``angle``.
+    step : float
+    """
     if name == "angle":
         angle = problem.model.shear_angle + step
         return replace(problem, model=replace(problem.model, shear_angle=angle))
