@@ -6,6 +6,7 @@ from typing import Callable, Optional
 
 import numpy as np
 
+from .cells import CellIndex, expanded
 from .errors import PicksError
 from .sources import Grid, conversion_text, to_vertical
 
@@ -282,7 +283,7 @@ class PreparedSource:
     raw_range: tuple
     length_unit: str
     runs: object = None
-    order: Optional[np.ndarray] = None
+    cells: Optional[CellIndex] = None
     conversion: str = field(default="")
 
     @property
@@ -325,6 +326,7 @@ def prepare_source(declaration, data, length_unit):
             length_unit,
             conversion=text,
         )
+    is_point = data.geometry == "point"
     converted = to_vertical(declaration, data.value, length_unit)
     refused = dict(data.refused)
     if data.surface is None:
@@ -334,77 +336,89 @@ def prepare_source(declaration, data, length_unit):
         data,
         converted.value,
         refused,
-        _range(np.where(converted.reason == "", data.value, np.nan)),
+        _range(np.where(converted.unknown, np.nan, data.value)),
         length_unit,
-        runs=_runs(data) if data.geometry != "point" else None,
-        order=np.argsort(data.xy[:, 1], kind="stable")
-        if data.geometry == "point"
-        else None,
+        runs=None if is_point else _runs(data),
+        cells=CellIndex.build(data.xy) if is_point else None,
         conversion=text,
     )
 
 
 def _count_refused_parts(data, converted, refused):
     """Count parts none of whose vertices has a value, by the first reason."""
-    bad = converted.reason != ""
+    bad = converted.unknown
     if not bad.any():
         return
     part = data.part_of_vertex
     good = np.bincount(part[~bad], minlength=len(data.fid)) > 0
     lost = np.flatnonzero(~good & (np.diff(data.offsets) > 0))
-    for i in lost:
-        why = str(converted.reason[data.offsets[i]])
+    for why in converted.reasons_of(data.offsets[lost]).tolist():
         refused[why] = refused.get(why, 0) + 1
 
 
 @dataclass(frozen=True, eq=False)
 class _Runs:
-    """Boxes round short runs of line segments, and the segments themselves."""
+    """Short runs of line segments, their boxes, and the cells these lie in."""
 
-    start: np.ndarray  # first vertex of each segment
-    part: np.ndarray  # part of each segment
+    first: np.ndarray  # first and last vertex of each run
+    last: np.ndarray
     centre: np.ndarray
     half: np.ndarray
+    cells: CellIndex
 
 
 def _runs(data):
-    """Index the segments of lines by boxes round runs of `_RUN` segments."""
-    n = len(data.xy)
-    first = np.arange(max(n - 1, 0))
-    ends = data.offsets[1:-1] - 1  # a segment that starts here joins two parts
-    keep = np.ones(len(first), dtype=bool)
-    keep[ends[(ends >= 0) & (ends < len(first))]] = False
-    start = first[keep]
-    part = data.part_of_vertex[start] if n else start
-    if not len(start):
-        return _Runs(start, part, np.empty((0, 2)), np.empty((0, 2)))
-    at = np.arange(0, len(start), _RUN)
-    low = np.minimum(data.xy[start], data.xy[start + 1])
-    high = np.maximum(data.xy[start], data.xy[start + 1])
-    low, high = np.minimum.reduceat(low, at), np.maximum.reduceat(high, at)
-    return _Runs(start, part, 0.5 * (low + high), 0.5 * (high - low))
+    """Cut lines into runs of `_RUN` segments, each within one part."""
+    ends = data.offsets[1:] - 1
+    count = -(-np.maximum(ends - data.offsets[:-1], 0) // _RUN)
+    number, part = expanded(np.zeros(len(count), dtype=np.int64), count)
+    first = data.offsets[:-1][part] + number * _RUN
+    last = np.minimum(first + _RUN, ends[part])
+    if not len(first):
+        none = np.empty((0, 2))
+        return _Runs(first, last, none, none, CellIndex.build(none))
+    low, high = (_reduced(f, data.xy, first, last) for f in (np.minimum, np.maximum))
+    cells = CellIndex.build(low, high)
+    return _Runs(first, last, 0.5 * (low + high), 0.5 * (high - low), cells)
+
+
+def _reduced(extreme, xy, first, last):
+    """Least or largest coordinates of runs; one may take in a point beyond its end."""
+    columns = [extreme.reduceat(np.ascontiguousarray(c), first) for c in xy.T]
+    return extreme(np.column_stack(columns), xy[last])
 
 
 def _leg_crossings(runs, xy, a, b):
-    """Find where segments cross the leg a-b: segment number, fractions on both."""
+    """Find where segments cross the leg a-b: first vertex, fractions on both."""
     leg = b - a
     length = np.hypot(*leg)
     t = leg / length
     n = np.array([-t[1], t[0]])
-    c, h = runs.centre - a, runs.half
+    found = runs.cells.near(*_boxes_along(a, b, runs.cells.size))
+    c, h = runs.centre[found] - a, runs.half[found]
     near = np.abs(c @ n) <= h @ np.abs(n) + 1e-9
     near &= np.abs(c @ t - 0.5 * length) <= 0.5 * length + h @ np.abs(t) + 1e-9
-    found = np.flatnonzero(near)
-    segment = (found[:, None] * _RUN + np.arange(_RUN)).ravel()
-    segment = segment[segment < len(runs.start)]
-    p, q = xy[runs.start[segment]] - a, xy[runs.start[segment] + 1] - a
-    sp, sq = p @ n, q @ n
+    found = found[near]
+    vertex = runs.first[found][:, None] + np.arange(_RUN + 1)
+    # a run with fewer segments stays on its last vertex, where nothing is crossed
+    vertex = np.minimum(vertex, runs.last[found][:, None])
+    side = (xy[vertex] - a) @ n
     # half-open side test: a crossing at a shared vertex counts once
-    cross = (sp < 0) != (sq < 0)
-    segment, p, q, sp, sq = (v[cross] for v in (segment, p, q, sp, sq))
+    row, k = np.nonzero((side[:, :-1] < 0) != (side[:, 1:] < 0))
+    start, sp, sq = vertex[row, k], side[row, k], side[row, k + 1]
     on_segment = sp / (sp - sq)
+    p, q = xy[start] - a, xy[start + 1] - a
     along = (p + on_segment[:, None] * (q - p)) @ t
-    return segment, on_segment, along
+    return start, on_segment, along
+
+
+def _boxes_along(a, b, size):
+    """Cut a leg into pieces about as long as a cell and give their boxes."""
+    n = int(np.clip(np.ceil(np.hypot(*(b - a)) / size), 1, 1000))
+    at = a + np.linspace(0.0, 1.0, n + 1)[:, None] * (b - a)
+    slack = 1e-9 * max(np.abs(at).max(), 1.0)
+    low, high = np.minimum(at[:-1], at[1:]), np.maximum(at[:-1], at[1:])
+    return low - slack, high + slack
 
 
 def line_crossings(prepared, frame):
@@ -424,19 +438,23 @@ def line_crossings(prepared, frame):
     pieces = []
     last = len(frame.vertices) - 2
     for i, (a, b) in enumerate(zip(frame.vertices[:-1], frame.vertices[1:])):
-        segment, f, along = _leg_crossings(runs, xy, a, b)
+        start, f, along = _leg_crossings(runs, xy, a, b)
         length = np.hypot(*(b - a))
         # the end of a leg belongs to the next one, the last end to the last leg
         inside = (along >= -1e-9) & (
             (along <= length + 1e-9) if i == last else (along < length - 1e-9)
         )
-        pieces.append((segment[inside], f[inside], along[inside] + frame._distance[i]))
-    segment, f, distance = (np.concatenate(v) for v in zip(*pieces))
-    start = runs.start[segment]
+        pieces.append((start[inside], f[inside], along[inside] + frame._distance[i]))
+    start, f, distance = (np.concatenate(v) for v in zip(*pieces))
     value = prepared.value
     value = value[start] + f * (value[start + 1] - value[start])
     at = xy[start] + f[:, None] * (xy[start + 1] - xy[start])
-    return distance, value, runs.part[segment], at
+    return distance, value, _part_of(prepared.data, start), at
+
+
+def _part_of(data, vertex):
+    """Part number of some vertices."""
+    return np.searchsorted(data.offsets, vertex, side="right") - 1
 
 
 def points_in_corridor(prepared, frame, corridor):
@@ -449,16 +467,10 @@ def points_in_corridor(prepared, frame, corridor):
     x, off_section : ndarray (m,)
         Their place in the section and how far along strike they come from.
     """
-    xy, order = prepared.data.xy, prepared.order
-    sorted_y = xy[order, 1]
-    reach = np.abs(frame.strike_vector) * corridor + 1e-6
-    found = []
-    for low, high in _pieces(frame, corridor):
-        i0, i1 = np.searchsorted(sorted_y, [low[1] - reach[1], high[1] + reach[1]])
-        candidate = order[i0:i1]
-        px = xy[candidate, 0]
-        found.append(candidate[(px >= low[0] - reach[0]) & (px <= high[0] + reach[0])])
-    index = np.unique(np.concatenate(found))
+    xy = prepared.data.xy
+    reach = np.abs(frame.strike_vector) * corridor + 2e-3  # and the frame's millimetre
+    low, high = _pieces(frame, corridor)
+    index = prepared.cells.near(low - reach, high + reach)
     x, off = frame.project(xy[index])
     near = np.abs(off) <= corridor  # NaN where the section has no such x
     return index[near], x[near], off[near]
@@ -469,7 +481,7 @@ def _pieces(frame, corridor):
     n = int(np.clip(np.ceil(frame.x_max / max(2.0 * corridor, 1e-9)), 1, 64))
     x = np.union1d(np.linspace(0.0, frame.x_max, n + 1), frame._x)
     at = frame.to_map(x)
-    return zip(np.minimum(at[:-1], at[1:]), np.maximum(at[:-1], at[1:]))
+    return np.minimum(at[:-1], at[1:]), np.maximum(at[:-1], at[1:])
 
 
 def apparent_dip(dip, dip_azimuth, transport_azimuth):
@@ -606,7 +618,7 @@ def _from_points(prepared, frame, options):
     else:
         z = prepared.value[index]
         refused = np.where(np.isfinite(z), "", "no value").astype(object)
-    return x, z, off, prepared.data.part_of_vertex[index], xy, refused
+    return x, z, off, _part_of(prepared.data, index), xy, refused
 
 
 def _from_lines(prepared, frame):

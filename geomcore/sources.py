@@ -319,6 +319,9 @@ class Features:
         return np.repeat(np.arange(len(self.fid)), np.diff(self.offsets))
 
 
+_REASONS = ("", "no value", "null code")
+
+
 @dataclass(frozen=True, eq=False)
 class Converted:
     """Vertical values after the door.
@@ -328,12 +331,26 @@ class Converted:
     value : ndarray (n,)
         Elevation in the study's length unit or, in time, minus the two-way time
         in ms; NaN where unknown.
-    reason : ndarray (n,) of str
-        Why a value is unknown; empty where it is known.
+    code : ndarray (n,) of int
+        Why a value is unknown, as a number; 0 where it is known.
     """
 
     value: np.ndarray
-    reason: np.ndarray
+    code: np.ndarray
+
+    @property
+    def unknown(self):
+        """True where a value is unknown, (n,)."""
+        return self.code > 0
+
+    @property
+    def reason(self):
+        """Why a value is unknown, (n,) of str; empty where it is known."""
+        return self.reasons_of(slice(None))
+
+    def reasons_of(self, at):
+        """Give the reasons of some values only."""
+        return np.array(_REASONS)[self.code[at]]
 
 
 def to_vertical(declaration, raw, length_unit):
@@ -362,14 +379,15 @@ def to_vertical(declaration, raw, length_unit):
     array([-304.8,    nan])
     """
     raw = np.asarray(raw, dtype=float)
-    reason = np.full(raw.shape, "", dtype="<U24")
-    reason[~np.isfinite(raw)] = "no value"
+    code = np.where(np.isfinite(raw), 0, 1).astype(np.int8)
     with np.errstate(invalid="ignore"):
-        coded = np.isin(raw, declaration.null_values) | (np.abs(raw) >= 1e20)
-    reason[coded & np.isfinite(raw)] = "null code"
+        coded = np.abs(raw) >= 1e20
+    for null in declaration.null_values:
+        coded |= raw == null
+    code[coded & (code == 0)] = 2
     up = vertical_factor(declaration, length_unit)
     value = up * raw + declaration.datum_elevation * abs(up)
-    return Converted(np.where(reason == "", value, np.nan), reason)
+    return Converted(np.where(code > 0, np.nan, value), code)
 
 
 def vertical_factor(declaration, length_unit):
