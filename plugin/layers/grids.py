@@ -8,7 +8,7 @@ from dataclasses import dataclass
 from typing import Any, Callable
 
 import numpy as np
-from osgeo import gdal
+from osgeo import gdal, gdal_array
 from qgis.core import (
     Qgis,
     QgsCoordinateTransform,
@@ -20,15 +20,17 @@ from qgis.core import (
 
 from ...geomcore.errors import SourceError
 from ...geomcore.sources import Grid
-from .opening import say
+from .opening import is_undefined, say
 from .wkb import line_wkb, parse_wkb
 
 __all__ = ["read_grid"]
 
 _BAND = 1
-#: Pixels in the longer side of one window read for a piece of a section: large
-#: enough for few calls, small enough not to read far beside an oblique section.
-_WINDOW = 256
+#: Pixels in the side of one tile that is read at once and kept: large enough for few
+#: calls, small enough not to read far beside an oblique section.
+_TILE = 128
+#: Tiles kept at most, about 270 MB of 32-bit values; then reading starts afresh.
+_KEEP = 4096
 #: Pixels of slack, so that rounding loses no point on the outermost pixel centres.
 _SLACK = 1e-6
 
@@ -40,19 +42,24 @@ class _Raster:
     Parameters
     ----------
     read : callable
-        ``read(column, row, width, height)`` gives float values (height, width), NaN
-        where there are no data.
+        ``read(column, row, width, height)`` gives raw values (height, width).
+    known : callable
+        Turns raw values into floats, NaN where they stand for 'no data'.
+    dtype : dtype
+        Of the raw values.
     shape : tuple (columns, rows)
     geotransform : tuple of 6 float
         As GDAL counts it: from pixel corners.
-    block : tuple (columns, rows)
-        How the values are stored; whole blocks are read at once.
+    dataset : object
+        What has to stay open for reading.
     """
 
     read: Callable[[int, int, int, int], np.ndarray]
+    known: Callable[[np.ndarray], np.ndarray]
+    dtype: Any
     shape: tuple
     geotransform: tuple
-    keep_open: Any = None
+    dataset: Any
 
     def to_pixel(self, xy):
         """Give columns and rows counted from the first pixel's centre."""
@@ -99,8 +106,10 @@ def read_grid(layer, crs, transform_context, feedback=None):
     transform = _transform(layer, crs, transform_context, feedback)
     place = _bulk_transform(transform, layer)
 
+    tiles = _Tiles(raster)
+
     def sample(xy):
-        return _sample(raster, place(np.asarray(xy, dtype=float).reshape(-1, 2)))
+        return _sample(tiles, place(np.asarray(xy, dtype=float).reshape(-1, 2)))
 
     return Grid(sample, _cell(raster, transform, layer))
 
@@ -112,7 +121,7 @@ def _refuse(layer, reason, remedy):
 def _transform(layer, crs, context, feedback):
     """Transform from the study's CRS to the raster's, or None where none is needed."""
     own = layer.crs()
-    if not own.isValid():
+    if is_undefined(own):
         say(
             feedback,
             f"Raster '{layer.name()}' has no CRS; its coordinates are taken to be in "
@@ -160,55 +169,92 @@ def _cell(raster, transform, layer):
     return float(np.hypot(*(at[1:] - at[0]).T).min())
 
 
-def _sample(raster, xy):
-    """Bilinear values at raster coordinates, read by windows along the way."""
-    column, row = raster.to_pixel(xy)
-    out = np.full(len(xy), np.nan)
-    last_column, last_row = raster.shape[0] - 1, raster.shape[1] - 1
+class _Tiles:
+    """Pixels read so far, in square tiles that overlap by one pixel.
+
+    The overlap puts the four pixels round any point into one tile.
+    """
+
+    def __init__(self, raster):
+        self.raster = raster
+        across = [-(-(n - 1) // _TILE) for n in raster.shape]
+        self.table = np.full((across[1], across[0]), -1, dtype=np.int64)
+        self.store = np.empty((0, _TILE + 1, _TILE + 1), dtype=raster.dtype)
+        self.used = 0
+
+    def corners(self, i, j):
+        """Give the raw values of pixels (i, j) and their three neighbours, (4, n)."""
+        tile_i, tile_j = i // _TILE, j // _TILE
+        self._load(tile_j * self.table.shape[1] + tile_i)
+        side = _TILE + 1
+        slot = self.table[tile_j, tile_i]
+        at = (slot * side + (j - tile_j * _TILE)) * side + (i - tile_i * _TILE)
+        flat = self.store.reshape(-1)
+        return np.stack([flat[at], flat[at + 1], flat[at + side], flat[at + side + 1]])
+
+    def _load(self, wanted):
+        """Read the tiles that are not there yet."""
+        slots = self.table.reshape(-1)
+        missing = np.unique(wanted[slots[wanted] < 0])
+        if self.used + len(missing) > _KEEP:
+            slots[:] = -1
+            self.used, missing = 0, np.unique(wanted)
+        self._grow(self.used + len(missing))
+        for number in missing.tolist():
+            tile = self._read(*divmod(number, self.table.shape[1]))
+            self.store[self.used, : tile.shape[0], : tile.shape[1]] = tile
+            slots[number] = self.used
+            self.used += 1
+
+    def _grow(self, needed):
+        if needed > len(self.store):
+            size = max(needed, min(2 * len(self.store), _KEEP))
+            store = np.empty((size, *self.store.shape[1:]), dtype=self.store.dtype)
+            store[: self.used] = self.store[: self.used]
+            self.store = store
+
+    def _read(self, tile_j, tile_i):
+        column, row = tile_i * _TILE, tile_j * _TILE
+        width = min(_TILE + 1, self.raster.shape[0] - column)
+        height = min(_TILE + 1, self.raster.shape[1] - row)
+        return self.raster.read(column, row, width, height)
+
+
+def _sample(tiles, xy):
+    """Bilinear values at raster coordinates, NaN outside the pixel centres."""
+    column, row = tiles.raster.to_pixel(xy)
+    last_column, last_row = (n - 1 for n in tiles.raster.shape)
     with np.errstate(invalid="ignore"):
         inside = (column >= -_SLACK) & (column <= last_column + _SLACK)
         inside &= (row >= -_SLACK) & (row <= last_row + _SLACK)
+    out = np.full(len(xy), np.nan)
     at = np.flatnonzero(inside)
-    if not len(at):
-        return out
-    column = np.clip(column[at], 0, last_column)
-    row = np.clip(row[at], 0, last_row)
-    i = np.minimum(column.astype(np.int64), last_column - 1)
-    j = np.minimum(row.astype(np.int64), last_row - 1)
-    for run in _runs(i, j):
-        i0, j0 = int(i[run].min()), int(j[run].min())
-        width, height = int(i[run].max()) - i0 + 2, int(j[run].max()) - j0 + 2
-        window = raster.read(i0, j0, width, height)
-        out[at[run]] = _bilinear(window, column[run] - i0, row[run] - j0)
+    # no more tiles are needed at once than points are sampled
+    for first in range(0, len(at), _KEEP):
+        some = at[first : first + _KEEP]
+        out[some] = _bilinear(
+            tiles,
+            np.clip(column[some], 0, last_column),
+            np.clip(row[some], 0, last_row),
+        )
     return out
 
 
-def _runs(i, j):
-    """Cut points into runs that stay within one window; any order of points works."""
-    reach = np.maximum(np.abs(np.diff(i)), np.abs(np.diff(j)))
-    number = np.concatenate([[0], np.cumsum(reach)]) // _WINDOW
-    edges = np.flatnonzero(np.diff(number)) + 1
-    edges = np.concatenate([[0], edges, [len(i)]])
-    return [slice(a, b) for a, b in zip(edges[:-1], edges[1:])]
+def _bilinear(tiles, column, row):
+    """Bilinear values; a pixel without weight may lack data."""
+    last_column, last_row = (n - 2 for n in tiles.raster.shape)
+    i = np.minimum(column.astype(np.int64), last_column)
+    j = np.minimum(row.astype(np.int64), last_row)
+    f, g = _snapped(column - i), _snapped(row - j)
+    weight = np.stack([(1 - f) * (1 - g), f * (1 - g), (1 - f) * g, f * g])
+    value = tiles.raster.known(tiles.corners(i, j))
+    return np.where(weight > 0, weight * value, 0.0).sum(axis=0)
 
 
-def _bilinear(window, column, row):
-    """Bilinear values inside a window; a pixel without weight may lack data."""
-    i = np.minimum(column.astype(np.int64), window.shape[1] - 2)
-    j = np.minimum(row.astype(np.int64), window.shape[0] - 2)
-    f, g = column - i, row - j
-    f = np.where(np.abs(f - np.round(f)) < _SLACK, np.round(f), f)
-    g = np.where(np.abs(g - np.round(g)) < _SLACK, np.round(g), g)
-    total = np.zeros(len(column))
-    for dj, di, weight in (
-        (0, 0, (1 - f) * (1 - g)),
-        (0, 1, f * (1 - g)),
-        (1, 0, (1 - f) * g),
-        (1, 1, f * g),
-    ):
-        value = window[j + dj, i + di]
-        total += np.where(weight > 0, weight * value, 0.0)
-    return total
+def _snapped(fraction):
+    """Fractions, those within rounding of a pixel centre put onto it."""
+    whole = np.round(fraction)
+    return np.where(np.abs(fraction - whole) < _SLACK, whole, fraction)
 
 
 def _open_raster(layer):
@@ -259,17 +305,21 @@ def _of_gdal(dataset, layer):
                 f"{gdal.GetLastErrorMsg()}",
                 "Check the file.",
             )
-        value = _known(raw, nodata)
-        if mask is not None:
-            value[mask.ReadAsArray(column, row, width, height) == 0] = np.nan
-        return value if (scale, offset) == (1.0, 0.0) else value * scale + offset
+        if mask is None:
+            return raw
+        hidden = mask.ReadAsArray(column, row, width, height) == 0
+        return np.where(hidden, np.nan, _known(raw, nodata))
 
-    return _Raster(
-        read,
-        (dataset.RasterXSize, dataset.RasterYSize),
-        dataset.GetGeoTransform(),
-        dataset,
+    def known(raw):
+        return _known(raw, nodata) * scale + offset
+
+    kind = (
+        np.float64
+        if masked
+        else gdal_array.GDALTypeCodeToNumericTypeCode(band.DataType)
     )
+    shape = (dataset.RasterXSize, dataset.RasterYSize)
+    return _Raster(read, known, kind, shape, dataset.GetGeoTransform(), dataset)
 
 
 def _nodata_values(layer, own):
@@ -321,7 +371,10 @@ def _of_provider(layer):
             )
         return _of_block(block, width, height)
 
-    return _Raster(read, (columns, rows), (x0, dx, 0.0, y0, 0.0, -dy))
+    geotransform = (x0, dx, 0.0, y0, 0.0, -dy)
+    return _Raster(
+        read, np.asarray, np.float64, (columns, rows), geotransform, provider
+    )
 
 
 def _of_block(block, width, height):

@@ -21,6 +21,7 @@ from qgis.PyQt.QtCore import qVersion
 from ...geomcore.errors import SourceError, StudyError
 
 __all__ = [
+    "is_undefined",
     "length_unit_of",
     "open_layer",
     "say",
@@ -56,6 +57,17 @@ def versions():
         "PROJ": f"{QgsProjUtils.projVersionMajor()}.{QgsProjUtils.projVersionMinor()}",
         "numpy": np.__version__,
     }
+
+
+def is_undefined(crs):
+    """Tell whether a layer's CRS says nothing of where its coordinates lie.
+
+    A GeoPackage layer without CRS is given one of two stand-ins (srs_id -1 and 0 of
+    the OGC GeoPackage standard, "Undefined Cartesian SRS" and "Undefined geographic
+    SRS"), which QGIS takes for real ones; writers use either for plane metres too.
+    """
+    stand_in = not crs.authid() and crs.description().startswith("Undefined ")
+    return not crs.isValid() or stand_in
 
 
 def study_crs(crs):

@@ -19,7 +19,7 @@ from ...geomcore.errors import GeomcoreError, SourceError
 from ...geomcore.section import parse_azimuth
 from ...geomcore.sources import Features
 from ...geomcore.study import SectionLine
-from .opening import open_layer, say
+from .opening import is_undefined, open_layer, say
 from .wkb import UnknownGeometry, parse_wkb
 
 __all__ = ["read_section_lines", "read_source", "read_table"]
@@ -43,7 +43,7 @@ _NUMERIC = (
     QMetaType.Type.Short,
 )
 #: Features between two looks at the cancel button.
-_BLOCK = 5000
+_BLOCK = 500
 
 
 def read_source(
@@ -209,7 +209,12 @@ def read_table(layer, indices, crs, transform_context, feedback=None, near=None)
         Features that could not be reprojected.
     """
     lost = []
-    request = _request(layer, indices, crs, transform_context, feedback, lost)
+
+    def count_lost(feature):
+        # QGIS keeps a bare pointer: it has to live until all features are read
+        lost.append(feature.id())
+
+    request = _request(layer, indices, crs, transform_context, feedback, count_lost)
     wkb, fid, columns = [], [], [[] for _ in indices]
     for part in _iterators(layer, request, near):
         _collect(part, indices, wkb, fid, columns, feedback)
@@ -218,10 +223,10 @@ def read_table(layer, indices, crs, transform_context, feedback=None, near=None)
     return wkb, fid, columns, len(set(lost))
 
 
-def _request(layer, indices, crs, transform_context, feedback, lost):
+def _request(layer, indices, crs, transform_context, feedback, count_lost):
     request = QgsFeatureRequest().setSubsetOfAttributes(list(set(indices)))
     own = layer_crs(layer)
-    if not own.isValid():
+    if is_undefined(own):
         say(
             feedback,
             f"Layer '{layer_name(layer)}' has no CRS; its coordinates are taken to be "
@@ -229,7 +234,7 @@ def _request(layer, indices, crs, transform_context, feedback, lost):
         )
     elif own != crs:
         request.setDestinationCrs(crs, transform_context)
-        request.setTransformErrorCallback(lambda feature: lost.append(feature.id()))
+        request.setTransformErrorCallback(count_lost)
     return request
 
 
@@ -245,16 +250,13 @@ def _iterators(layer, request, near):
 
 def _collect(features, indices, wkb, fid, columns, feedback):
     """Take what is needed of each feature; the hot loop of reading."""
-    add_wkb, add_fid = wkb.append, fid.append
-    adders = [(i, column.append) for i, column in zip(indices, columns)]
     while True:
-        before = len(fid)
-        for f in islice(features, _BLOCK):
-            add_wkb(f.geometry().asWkb().data())
-            add_fid(f.id())
-            for i, add in adders:
-                add(f[i])
-        if len(fid) - before < _BLOCK:
+        block = list(islice(features, _BLOCK))
+        wkb += [f.geometry().asWkb().data() for f in block]
+        fid += [f.id() for f in block]
+        for i, column in zip(indices, columns):
+            column += [f[i] for f in block]
+        if len(block) < _BLOCK:
             return
         check_cancelled(feedback)
 
@@ -328,14 +330,16 @@ def numbers(values):
 def texts(values):
     """Turn attribute values into texts, '' where there is none."""
     out = np.empty(len(values), dtype=object)
-    out[:] = ["" if v is None or v == NULL else _text(v) for v in values]
+    out[:] = [v if v.__class__ is str else _text(v) for v in values]
     return out
 
 
 def _text(value):
+    if value is None or value == NULL:
+        return ""
     if isinstance(value, float) and value.is_integer():
         return str(int(value))
-    return str(value).strip()
+    return str(value)
 
 
 def _azimuths(values):
@@ -354,15 +358,15 @@ def _features(declaration, layer, wanted, table, surface, feedback):
     wkb, fid, columns, lost = table
     values = dict(zip(wanted, columns))
     refused = {"cannot be reprojected": lost} if lost else {}
-    keep = np.array([len(w) > 0 for w in wkb], dtype=bool)
+    keep = np.fromiter(map(bool, wkb), dtype=bool, count=len(wkb))
     _count(refused, "no geometry", ~keep)
     z = None
     if "z" in values:
         z, text = numbers(values["z"])
         _count(refused, "text in a number field", text & keep)
         keep &= ~text
-    parts = _parse([w for w, k in zip(wkb, keep) if k])
     at = np.flatnonzero(keep)
+    parts = _parse(wkb if len(at) == len(wkb) else [wkb[i] for i in at.tolist()])
     parts, kind = _of_one_kind(parts, declaration, layer, refused, len(at))
     owner = at[parts.owner] if len(at) else parts.owner
     own = _part_columns(declaration, layer, values, owner, feedback)

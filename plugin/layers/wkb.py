@@ -20,6 +20,18 @@ _OLD_Z = 1 << 31
 _NATIVE = "<" if sys.byteorder == "little" else ">"
 
 
+def _head(kind, width):
+    code = kind + (1000 if width == 3 else 0)
+    order = b"\x01" if _NATIVE == "<" else b"\x00"
+    return order + np.array([code], _NATIVE + "u4").tobytes()
+
+
+#: First bytes of single points and lines: their kind and doubles per vertex.
+_SINGLE = {
+    _head(kind, width): (kind, width) for kind in (_POINT, _LINE) for width in (2, 3)
+}
+
+
 class UnknownGeometry(Exception):
     """A geometry of another kind than point, line, polygon and their multiples.
 
@@ -84,6 +96,9 @@ def parse_wkb(geometries):
     UnknownGeometry
         If one is a curve or another kind that has no plain coordinates.
     """
+    simple = _all_single(geometries)
+    if simple is not None:
+        return simple
     sizes = np.fromiter(map(len, geometries), dtype=np.int64, count=len(geometries))
     data = b"".join(geometries)
     at = np.concatenate([[0], np.cumsum(sizes)])[:-1]
@@ -93,6 +108,34 @@ def parse_wkb(geometries):
         raise UnknownGeometry(np.unique(np.concatenate(found.unknown)))
     kind, owner, start, count, width = found.in_order()
     return _gather(data, kind, owner, start, count, width)
+
+
+def _all_single(geometries):
+    """Parse the common case of points only or lines only, all of one type.
+
+    The coordinates are copied once, into an array of which xy and z are views.
+    None where the geometries are of another kind or of several.
+    """
+    head = geometries[0][:5] if geometries else b""
+    kind, width = _SINGLE.get(head, (0, 0))
+    if not kind or not all([g.startswith(head) for g in geometries]):
+        return None
+    n = len(geometries)
+    if kind == _POINT:
+        raw = np.frombuffer(b"".join(geometries), dtype=np.uint8).reshape(n, -1)
+        body = np.ascontiguousarray(raw[:, 5:])
+        count = np.ones(n, dtype=np.int64)
+    else:
+        body = np.frombuffer(
+            b"".join([memoryview(g)[9:] for g in geometries]), np.uint8
+        )
+        sizes = np.fromiter(map(len, geometries), dtype=np.int64, count=n)
+        count = (sizes - 9) // (8 * width)
+    rows = body.view(_NATIVE + "f8").reshape(-1, width)
+    z = rows[:, 2] if width == 3 else np.full(len(rows), np.nan)
+    offsets = np.concatenate([[0], np.cumsum(count)])
+    parts = Parts(np.full(n, kind), np.arange(n), offsets, rows[:, :2], z)
+    return _with_coordinates(parts)
 
 
 @dataclass(frozen=True, eq=False)
@@ -120,7 +163,6 @@ class _Found:
             return [np.empty(0, dtype=np.int64)] * 5
         columns = (self.kind, self.owner, self.start, self.count, self.width)
         columns = [np.concatenate(c) for c in columns]
-        columns = [c[columns[3] > 0] for c in columns]
         if np.any(np.diff(columns[2]) < 0):
             order = np.argsort(columns[2], kind="stable")
             columns = [c[order] for c in columns]
@@ -210,37 +252,23 @@ def _gather(data, kind, owner, start, count, width):
         if w in (3, 4):
             z[at] = rows[:, 2]
     parts = Parts(kind, owner, offsets, xy, z)
-    return _without_empty_points(parts)
+    return _with_coordinates(parts)
 
 
 def _doubles(data, start, size):
     """Give the doubles of byte runs, one run after the other."""
-    if len(start) > 1 and len(np.unique(size)) == 1:
-        step = np.unique(np.diff(start))
-        if len(step) == 1:
-            shape = (len(start), int(size[0]))
-            return _evenly_spaced(data, int(start[0]), int(step[0]), shape)
     view = memoryview(data)
     runs = [view[a:b] for a, b in zip(start.tolist(), (start + size).tolist())]
     return np.frombuffer(b"".join(runs), dtype=_NATIVE + "f8")
 
 
-def _evenly_spaced(data, first, step, shape):
-    """Doubles of runs of one size at equal distances (a layer of points)."""
-    raw = np.frombuffer(data, dtype=np.uint8)
-    rows = np.lib.stride_tricks.as_strided(
-        raw[first:], shape=shape, strides=(step, 1), writeable=False
-    )
-    return np.ascontiguousarray(rows).view(_NATIVE + "f8").ravel()
-
-
-def _without_empty_points(parts):
-    """Leave out points without coordinates (an empty point is written as NaN)."""
-    first = parts.offsets[:-1]
-    empty = (parts.kind == _POINT) & np.isnan(parts.xy[first]).any(axis=1)
-    if not empty.any():
-        return parts
-    return parts.select(~empty)
+def _with_coordinates(parts):
+    """Leave out empty parts; an empty point is written as NaN."""
+    count = np.diff(parts.offsets)
+    keep = count > 0
+    point = np.flatnonzero((parts.kind == _POINT) & keep)
+    keep[point] = np.isfinite(parts.xy[parts.offsets[point]]).all(axis=1)
+    return parts if keep.all() else parts.select(keep)
 
 
 def line_wkb(coordinates):
@@ -258,9 +286,3 @@ def point_wkb(coordinates):
     """Give the WKB of one point from 2 or 3 coordinates."""
     coordinates = np.asarray(coordinates, dtype=_NATIVE + "f8")
     return _head(_POINT, len(coordinates)) + coordinates.tobytes()
-
-
-def _head(kind, width):
-    code = kind + (1000 if width == 3 else 0)
-    order = b"\x01" if _NATIVE == "<" else b"\x00"
-    return order + np.array([code], _NATIVE + "u4").tobytes()
