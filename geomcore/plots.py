@@ -163,7 +163,7 @@ def section_figure(study, section_result, options=None):
         matplotlib.rcdefaults()
         matplotlib.rcParams.update(_SETTINGS)
         figure = matplotlib.figure.Figure(facecolor="white")
-        figure.set_label(f"Section {clean(section_result.frame.section_id)}")
+        figure.set_label(title_words(view))
         axes = figure.add_axes((0.1, 0.1, 0.8, 0.8), gid="section")
         drawing = draw_section(axes, view)
         ruler = TextRuler(_all_names(view, options))
