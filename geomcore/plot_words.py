@@ -89,7 +89,7 @@ def method_words(view):
     """Say how the fault was made and what came out."""
     words = []
     if view.domain == "time":
-        words.append("Two-way times: no depths, thicknesses or dips can be read off them.")
+        words.append("Two-way times: no depths, thicknesses or dips can be read off.")
     if view.prediction:
         words.append(_construction_words(view.prediction))
     if view.separation:
