@@ -131,28 +131,28 @@ def check_compaction(compaction, model, where=""):
         )
 
 
-def check_surfaces(compaction, bed_z, regional_z, slack, where=""):
+def check_surfaces(compaction, bed_z, regional_z, bed_slack, regional_slack, where=""):
     """Refuse a bed above the sediment surface of its time.
 
     Parameters
     ----------
     compaction : Compaction
-    bed_z, regional_z : ndarray (n,)
-        The bed now, the regional at the origins of its columns.
-    slack : ndarray or float
+    bed_z, regional_z : ndarray
+        The bed now, and its regional when the fault moved.
+    bed_slack, regional_slack : ndarray or float
         How far above is let pass as noise; the porosity there is the surface's.
     where : str
 
     Raises
     ------
     ConstructionError
-        If a bed lies higher than that.
+        If either lies higher than that.
     """
-    pairs = (
-        ("bed", "now", bed_z - compaction.surface_now_z),
-        ("regional", "when the fault moved", regional_z - compaction.surface_then_z),
-    )
-    for what, when, above in pairs:
+    now, then = compaction.surface_now_z, compaction.surface_then_z
+    for what, when, above, slack in (
+        ("bed", "now", bed_z - now, bed_slack),
+        ("regional", "when the fault moved", regional_z - then, regional_slack),
+    ):
         if np.any(above > slack):
             raise ConstructionError(
                 "above-sediment-surface",

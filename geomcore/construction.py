@@ -5,7 +5,7 @@ from typing import Optional
 
 import numpy as np
 
-from .compaction import check_compaction
+from .compaction import check_compaction, check_surfaces
 from .doubts import march_doubts
 from .errors import ConstructionError
 from .fault import ASSUMED_GAP
@@ -259,11 +259,30 @@ def check_problem(problem):
     ------
     ConstructionError
         If the separation is reverse or on the wrong side, the shear direction is
-        parallel to the fault, or compaction does not go with the model.
+        parallel to the fault, compaction does not go with the model, or a bed lies
+        above the sediment surface of its time.
     """
     check_compaction(problem.options.compaction, problem.model, problem.where)
     _check_separation(problem)
     _check_fault_in_frame(problem)
+    if problem.options.compaction is not None:
+        _check_surfaces(problem)
+
+
+def _check_surfaces(problem):
+    """Refuse beds above the sediment surface by more than noise could lift them."""
+    bed, regional = problem.bed, problem.regional
+    # the straight regional is highest at one of the ends of what moved
+    ends = np.array([problem.separation.footwall.x, bed.x[-1]])
+    least = 1e-3 * problem.separation.throw
+    check_surfaces(
+        problem.options.compaction,
+        bed.z,
+        regional(ends),
+        3.0 * bed.sigma + least,
+        3.0 * regional.sigma_at(ends) + least,
+        problem.where,
+    )
 
 
 def _check_separation(problem):

@@ -98,7 +98,8 @@ def forward_horizon(
     z = level(u) + fault(arrived) - fault(u)
     if compaction is not None:
         z = z - compaction.thinning_above(level(u), fault(u), fault(arrived))
-        check_surfaces(compaction, z, level(u), 1e-6 * displacement)
+        least = 1e-6 * displacement
+        check_surfaces(compaction, z, level(u), least, least)
     x = from_shear_frame(arrived, z, model.shear_angle)
     foot_z = float(fault(u_foot))
     return (

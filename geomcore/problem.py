@@ -5,7 +5,7 @@ from typing import Optional
 
 import numpy as np
 
-from .compaction import Compaction, check_surfaces
+from .compaction import Compaction
 from .errors import ConstructionError
 from .kinematics import to_shear_frame
 from .profile import Profile, pool_to_increasing
@@ -255,7 +255,6 @@ def solve_march(problem):
     if problem.options.compaction is None:
         z = march(index, fraction, start, bed_z - regional_z)
         return Solution(u, z, index, fraction, bed_z, regional_z, bed, m + 1)
-    _check_surfaces(problem, bed, u[m:], origin[m:], bed_z[m:], regional_z[m:])
     return _compacting(
         problem.options.compaction, u, index, fraction, start, bed_z, regional_z, bed
     )
@@ -271,7 +270,7 @@ def _compacting(compaction, u, index, fraction, start, bed_z, regional_z, bed):
 
     z = march(index, fraction, start, increment, step)
     inner = at_origin(index, fraction, z)
-    thinning = z - inner - increment
+    thinning = compaction.thinning(bed_z, regional_z, inner)
     thinning[: len(start)] = 0.0
     gains = compaction.gains(bed_z, inner, z)
     return Solution(
@@ -286,13 +285,6 @@ def _compacting(compaction, u, index, fraction, start, bed_z, regional_z, bed):
         thinning=thinning,
         gains=gains,
     )
-
-
-def _check_surfaces(problem, bed, u, origin, bed_z, regional_z):
-    """Refuse beds above the sediment surface by more than noise could lift them."""
-    sigma = np.hypot(np.interp(u, bed.x, bed.sigma), problem.regional.sigma_at(origin))
-    slack = 3.0 * sigma + 1e-3 * problem.separation.throw
-    check_surfaces(problem.options.compaction, bed_z, regional_z, slack, problem.where)
 
 
 def bed_from(cutoff, bed):

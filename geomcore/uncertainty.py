@@ -8,7 +8,7 @@ from .fitting import solve_by_fit
 from .kinematics import from_shear_frame
 from .problem import solve_march
 from .profile import Profile
-from .stepping import hat_matrix, march
+from .stepping import hat_matrix
 
 __all__ = [
     "ErrorColumns",
@@ -66,13 +66,14 @@ def error_columns(problem, solution):
 
     Notes
     -----
-    Pick noise is carried through the march itself, which is linear in the bed, or is
-    the posterior of the fit. Regional, cut-offs and shear angle are carried by
-    differences of whole solutions, over one standard deviation to either side: over
-    less the noise of single picks, which slides under the strips, would pass for an
-    effect of the parameter. The error of the known piece is copied into every strip
-    and does not grow (methods.md section 13). An error along the shear line becomes
-    a vertical one by 1 + tan(dip) tan(a) (section 8).
+    Pick noise is carried through the march itself, which is linear in the bed (with
+    compaction for small errors), or is the posterior of the fit. Regional, cut-offs
+    and shear angle are carried by differences of whole solutions, over one standard
+    deviation to either side: over less the noise of single picks, which slides under
+    the strips, would pass for an effect of the parameter. The error of the known
+    piece is copied into every strip and does not grow (methods.md section 13). An
+    error along the shear line becomes a vertical one by 1 + tan(dip) tan(a)
+    (section 8).
     """
     x = from_shear_frame(solution.u, solution.z, problem.model.shear_angle)
     frame_factor = 1.0 - _mean_slope(x, solution) * problem.tan
@@ -105,12 +106,7 @@ def _pick_columns(solution):
     bed = solution.bed
     weights = hat_matrix(solution.u, bed.x)
     weights[:, 0] = 0.0  # the bed's first point is the cut-off, varied apart
-    rows = march(
-        solution.origin_index,
-        solution.origin_fraction,
-        np.zeros((solution.start, weights.shape[1])),
-        weights,
-    )
+    rows = solution.carried(weights)
     if not bed.correlation.any():
         return rows * bed.sigma
     small = 1e-12 * np.eye(len(bed)) * bed.sigma**2
@@ -119,10 +115,10 @@ def _pick_columns(solution):
 
 def _regional_columns(problem, solution, x):
     """Level and dip of the regional, whose errors go together."""
-    a, b, c = problem.regional.covariance
+    of_level, _, of_slope = problem.regional.covariance
     steps = (
-        max(np.sqrt(a), 1e-3 * problem.separation.throw),
-        max(np.sqrt(c), 1e-4),
+        max(np.sqrt(of_level), 1e-3 * problem.separation.throw),
+        max(np.sqrt(of_slope), 1e-4),
     )
     names = ("level", "slope")
     effect = [_difference(problem, solution, x, n, s) for n, s in zip(names, steps)]
