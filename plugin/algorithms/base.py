@@ -8,7 +8,11 @@ from qgis.core import (
     QgsProcessingMultiStepFeedback,
     QgsProcessingOutputNumber,
     QgsProcessingOutputVectorLayer,
+    QgsProcessingParameterDefinition,
+    QgsProcessingParameterEnum,
+    QgsProcessingParameterNumber,
 )
+from qgis.PyQt import sip
 
 from ..definitions import make, tr
 from .values import Values
@@ -158,12 +162,16 @@ class Algorithm(QgsProcessingAlgorithm):
 
     def checkParameterValues(self, parameters, context):
         """Check what can be checked before the run; the first fault is told."""
-        ready, sentence = super().checkParameterValues(parameters, context)
-        if not ready:
-            return ready, sentence
         ready, sentence = self.canExecute()
         if not ready:
             return ready, sentence
+        for definition in self.parameterDefinitions():
+            sentence = _unusable(definition, parameters, context)
+            if sentence:
+                return False, sentence
+        ready, sentence = super().checkParameterValues(parameters, context)
+        if not ready:
+            return ready, sentence.rstrip(".") + "."
         values = Values(self, parameters, context)
         try:
             for sentence in (*self._destination_faults(values), *self.check(values)):
@@ -289,8 +297,15 @@ class _Style(QgsProcessingLayerPostProcessorInterface):
 
 
 _STYLED = "heaveline/styled"
-# QGIS keeps a bare pointer: without this name Python would take the object away.
-_STYLE = _Style()
+#: The context deletes each when it goes, but does not keep Python's half alive.
+_KEPT = []
+
+
+def _new_style():
+    """Make a post-processor that lives as long as the context it is given to."""
+    _KEPT[:] = [style for style in _KEPT if not sip.isdeleted(style)]
+    _KEPT.append(_Style())
+    return _KEPT[-1]
 
 
 def _load_on_completion(context, uris):
@@ -307,8 +322,35 @@ def _load_on_completion(context, uris):
         details = QgsProcessingContext.LayerDetails(LAYERS[name].title, project)
         details.forceName = True
         details.layerSortKey = number + 1
-        details.setPostProcessor(_STYLE)
+        details.setPostProcessor(_new_style())
         context.addLayerToLoadOnCompletion(uri, details)
+
+
+def _unusable(definition, parameters, context):
+    """Say what a parameter would take, where it does not take its value."""
+    key = definition.name()
+    value = parameters.get(key, definition.defaultValue())
+    if definition.checkValueIsAcceptable(value, context):
+        return ""
+    label = f"{definition.description()} ({key})"
+    optional = definition.flags() & QgsProcessingParameterDefinition.Flag.FlagOptional
+    if value in (None, "") and not optional:
+        return tr("{} is not given.").format(label)
+    return tr("{}: '{}' cannot be used.{}").format(label, value, _takes(definition))
+
+
+def _takes(definition):
+    """Say what values a number or a choice takes."""
+    if isinstance(definition, QgsProcessingParameterEnum):
+        return " " + tr("Use one of: {}.").format(", ".join(definition.options()))
+    if isinstance(definition, QgsProcessingParameterNumber):
+        low, high = definition.minimum(), definition.maximum()
+        if high < 1e12:
+            return " " + tr("Give a number from {:g} to {:g}.").format(low, high)
+        if low > -1e12:
+            return " " + tr("Give a number of {:g} or more.").format(low)
+        return " " + tr("Give a number.")
+    return ""
 
 
 def _file_sentence(error):

@@ -52,6 +52,8 @@ class ConstructingAlgorithm(Algorithm):
                 steps.next("Drawing the sections")
                 draw_plots(run, Path(drawn), steps)
             steps.next("Writing the results")
+            if not values.has("OUTPUT"):  # where the study says, folder and all
+                path.parent.mkdir(parents=True, exist_ok=True)
             names = write(tables, run.study, path, place, steps)
             if plots:
                 publish(Path(drawn), plots)

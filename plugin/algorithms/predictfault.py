@@ -52,9 +52,8 @@ class PredictFault(ConstructingAlgorithm):
 
     def check(self, values):
         """Ask for layers as earlier steps write them, and a study that holds."""
-        place = self.place(values, "SECTIONS")
-        self._study(values, place)
         yield from self.replaced_by_part(values, ("SECTIONS", "PICKS", "PICKS_TIME"))
+        self._study(values, self.place(values, "SECTIONS"))
         if values.choice("SOLVER") == "fit":
             yield from self.missing("scipy", "SOLVER")
 

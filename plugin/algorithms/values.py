@@ -8,6 +8,7 @@ from qgis.core import (
     QgsMapLayer,
     QgsProcessingFeatureSourceDefinition,
     QgsProcessingParameters,
+    QgsProcessingUtils,
     QgsProperty,
     QgsVariantUtils,
 )
@@ -97,10 +98,14 @@ class Values:
         return self._ask(QgsProcessingParameters.parameterAsSource, key)
 
     def layer(self, key):
-        """Give a layer itself, or None."""
+        """Give a layer itself, whole even where a part was asked for, or None."""
         if not self.has(key):
             return None
-        return self._ask(QgsProcessingParameters.parameterAsLayer, key)
+        value = self.parameters.get(key)
+        if not isinstance(value, QgsProcessingFeatureSourceDefinition):
+            return self._ask(QgsProcessingParameters.parameterAsLayer, key)
+        text, _ = value.source.valueAsString(self.context.expressionContext())
+        return QgsProcessingUtils.mapLayerFromString(text, self.context)
 
     def raster(self, key):
         """Give a raster layer, or None."""
