@@ -165,26 +165,39 @@ def straight_fault_test(problem):
     Notes
     -----
     Over a straight fault every column sinks alike, so the bed stays parallel to the
-    regional: B~(u) = R~(u - H) + slope H. Compaction, tilting after the faulting and
-    a second fault can bend a bed too; the test does not tell them apart.
+    regional: B~(u) = R~(u - H) + slope H, less what the columns thin where the
+    problem has compaction. Compaction that it leaves out, tilting after the faulting
+    and a second fault can bend a bed too; the test does not tell them apart.
     """
     if not isinstance(problem.model, ConstantHeave):
         raise ConstructionError(
             "straight-model", "the straight-fault test holds for constant heave only."
         )
     bed = bed_in_frame(problem)
-    heave = problem.oblique_heave
     u, z = bed.x[1:], bed.z[1:]
     dip = problem.separation.cutoff_dip
-    miss = z - problem.regional_at(u - heave) + problem.separation.throw
+    miss = z - _straight_bed(problem, u)
     sigma = np.maximum(bed.sigma[1:], 1e-4 * problem.separation.throw)
     shared = _shared_errors(problem, u)
     rms = _misfit(miss, sigma, shared)
     worst = float(np.abs(miss).max())
     ratio = _log_ratio(problem)
     verdict = _verdict(rms, ratio, len(u))
-    text = _words(verdict, dip, rms, worst, ratio)
+    but = "" if problem.options.compaction is None else ", but for its compaction"
+    text = _words(verdict, dip, rms, worst, ratio, but)
     return StraightFaultTest(dip, rms, worst, ratio, verdict, text)
+
+
+def _straight_bed(problem, u):
+    """Bed over a straight fault through both cut-offs."""
+    foot, heave = problem.separation.footwall, problem.oblique_heave
+    throw, compaction = problem.separation.throw, problem.options.compaction
+    level = problem.regional_at(u - heave)
+    if compaction is None:
+        return level - throw
+    along = (u - heave - (foot.x - foot.z * problem.tan)) / heave
+    then = foot.z - throw * along
+    return level - throw - compaction.thinning_above(level, then, then - throw)
 
 
 def _shared_errors(problem, u):
@@ -210,6 +223,8 @@ def _misfit(miss, sigma, shared):
 
 def _log_ratio(problem):
     """Twice the log likelihood ratio of a smooth curve over a straight line."""
+    if problem.options.compaction is not None:
+        return None  # the fit does not hold with it
     try:
         u, beds, points = section_rows(problem)
         system = _with_shared_errors(problem, assemble(u, beds, points), beds)
@@ -245,10 +260,10 @@ def _verdict(rms, ratio, n):
     return "not resolved" if ratio > VERY_STRONG or beyond_chance else "straight"
 
 
-def _words(verdict, dip, rms, worst, ratio):
+def _words(verdict, dip, rms, worst, ratio, but):
     against = (
         f"A straight fault of {dip:.0f} degrees would keep the bed parallel to the "
-        f"regional; the picks miss that by {rms:.1f} times their error, that of "
+        f"regional{but}; the picks miss that by {rms:.1f} times their error, that of "
         f"regional and cut-offs included ({worst:.0f} at most)."
     )
     weight = (

@@ -14,6 +14,7 @@ from worlds import (
     DOCUMENT,
     EXPONENTIAL,
     FAULTS,
+    PLANAR,
     RAMP_FLAT,
     World,
     changed,
@@ -26,6 +27,7 @@ from worlds import (
 
 from geomcore.burial import buried_dip, buried_trace
 from geomcore.compaction import Compaction, check_compaction, compaction_from
+from geomcore.comparison import problem_of, straight_fault_test
 from geomcore.construction import predict_fault
 from geomcore.errors import ConstructionError, StudyError
 from geomcore.forward import forward_horizon
@@ -339,6 +341,21 @@ def test_stated_error_is_the_scatter_under_noise():
     stated = np.interp(x, runs[0].x, runs[0].sigma_z)
     # 200 runs: the scatter itself is known to 5 %; bar of three times that
     assert stated == pytest.approx(scatter, rel=0.15)
+
+
+def test_bed_bent_by_compaction_alone_asks_for_no_curved_fault():
+    """Over a planar fault the compacted bed is bent; told of it, the test knows."""
+    inputs = inputs_for(World(PLANAR, reach=8000.0), BURIED)
+    sigma = np.full(len(inputs["bed"]), 2.0)
+    bed = Profile(inputs["bed"].x, inputs["bed"].z, sigma)
+    made = predict_fault(**{**inputs, "bed": bed})
+    problem = problem_of(made, inputs["fault"], bed, MarchOptions(), "section S1")
+    unaware = straight_fault_test(problem)
+    assert unaware.verdict == "curved"
+    aware = straight_fault_test(replace(problem, options=inputs["options"]))
+    assert aware.misfit_rms < 0.1 < unaware.misfit_rms
+    assert (aware.verdict, aware.log_ratio) == ("not resolved", None)
+    assert "but for its compaction" in aware.text
 
 
 # --- in the study ------------------------------------------------------------------
