@@ -1,14 +1,19 @@
 """The fault as far as it is observed, carried on straight beyond."""
 
 from dataclasses import dataclass, field
+from typing import Optional
 
 import numpy as np
 
 from .errors import Doubt, PicksError
 from .profile import pool_to_increasing
 
-__all__ = ["KnownFault", "known_fault"]
+__all__ = ["ASSUMED_GAP", "KnownFault", "known_fault"]
 
+#: Known points farther apart than this share of the heave leave the fault between
+#: them assumed: straight, too high by up to a quarter of what a chord from cut-off to
+#: cut-off would be (methods.md section 1).
+ASSUMED_GAP = 0.5
 #: A gap this many times the usual spacing parts the known piece from deep ties
 #: (common practice, no source).
 TIE_GAP = 5.0
@@ -31,6 +36,8 @@ class KnownFault:
     tie_x, tie_z, tie_sigma : ndarray (k,)
         Deep ties: points on the fault far beyond the known piece. The march does
         not use them; the fit does.
+    observed : int, optional
+        Points observed, if assumed ones follow them; all by default.
     """
 
     x: np.ndarray
@@ -42,6 +49,7 @@ class KnownFault:
     tie_x: np.ndarray = field(default_factory=lambda: np.empty(0))
     tie_z: np.ndarray = field(default_factory=lambda: np.empty(0))
     tie_sigma: np.ndarray = field(default_factory=lambda: np.empty(0))
+    observed: Optional[int] = None
 
     def z_at(self, x):
         """Give the fault elevation at x, carried on straight beyond the points."""
@@ -68,12 +76,14 @@ class KnownFault:
         ]
         return slopes[np.searchsorted(self.x, np.asarray(x, dtype=float))]
 
-    def is_known(self, x):
-        """Tell where x lies on the observed piece (more than a single point)."""
-        x = np.asarray(x, dtype=float)
-        if len(self.x) < 2:
+    def is_known(self, x, longest=np.inf):
+        """Tell where x lies between observed points at most `longest` apart."""
+        x, own = np.asarray(x, dtype=float), self.x[: self.observed]
+        if len(own) < 2:
             return np.zeros(x.shape, dtype=bool)
-        return (x >= self.x[0] - 1e-6) & (x <= self.x[-1] + 1e-6)
+        inside = (x >= own[0] - 1e-6) & (x <= own[-1] + 1e-6)
+        after = np.clip(np.searchsorted(own, x), 1, len(own) - 1)
+        return inside & (own[after] - own[after - 1] <= longest)
 
     def crossing(self, curve, x_low, x_high):
         """Give x where the fault meets a curve z(x) between two x, or None.
