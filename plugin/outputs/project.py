@@ -25,8 +25,19 @@ from qgis.core import (
 from ...geomcore.errors import GeomcoreError
 from ..fields import LAYERS
 from ..layers import open_layer
+from .ranges import fit_raster
 
-__all__ = ["ProjectGroup", "ProjectLayer", "make_project", "result_layers"]
+__all__ = [
+    "INPUT_STYLES",
+    "ProjectGroup",
+    "ProjectLayer",
+    "make_project",
+    "result_layers",
+]
+
+#: Styles for common inputs: fault_trace, structure_contours, fault_picks, bed_dips,
+#: planned_wells, section_lines, and the rasters ground and depth_grid, each as QML.
+INPUT_STYLES = Path(__file__).resolve().parent / "styles" / "inputs"
 
 #: Order inside a group.
 _RANK = {
@@ -205,6 +216,8 @@ def _open(own, folder):
             f"layer '{own.name}'",
             "Check the style file.",
         )
+    if layer.type() == Qgis.LayerType.Raster:
+        fit_raster(layer)
     return layer
 
 

@@ -3,18 +3,20 @@
 import math
 
 from qgis.core import (
+    Qgis,
     QgsCategorizedSymbolRenderer,
     QgsClassificationRange,
     QgsExpressionContextUtils,
     QgsGraduatedSymbolRenderer,
     QgsRendererCategory,
     QgsRendererRange,
+    QgsSingleBandPseudoColorRenderer,
 )
 from qgis.PyQt.QtGui import QColor
 
 from .colours import HORIZON_COLOURS, ramp_colour
 
-__all__ = ["fit_balls", "fit_to_data", "round_limits"]
+__all__ = ["fit_balls", "fit_raster", "fit_to_data", "round_limits"]
 
 #: Layer variables that the graded line of predicted fault traces is drawn between.
 Z_LOW, Z_HIGH = "heaveline_z_low", "heaveline_z_high"
@@ -120,6 +122,32 @@ def _horizons(layer):
     if not categories:
         return layer.renderer().clone()
     return QgsCategorizedSymbolRenderer("horizon", categories)
+
+
+def fit_raster(layer):
+    """Stretch the colours of a raster between its lowest and its highest value.
+
+    Parameters
+    ----------
+    layer : QgsRasterLayer
+        Styled; what is not drawn as a colour ramp of one band is left as it is.
+    """
+    renderer = layer.renderer()
+    if not isinstance(renderer, QgsSingleBandPseudoColorRenderer):
+        return
+    found = layer.dataProvider().bandStatistics(
+        renderer.inputBand(),
+        Qgis.RasterBandStatistic.Min | Qgis.RasterBandStatistic.Max,
+    )
+    if not found.minimumValue < found.maximumValue:
+        return
+    limits = round_limits(found.minimumValue, found.maximumValue)
+    renderer.setClassificationMin(limits[0])
+    renderer.setClassificationMax(limits[-1])
+    ramp = renderer.shader().rasterShaderFunction()
+    ramp.setMinimumValue(limits[0])
+    ramp.setMaximumValue(limits[-1])
+    ramp.classifyColorRamp(len(limits), renderer.inputBand())
 
 
 def fit_balls(document, layer, layer_name):
