@@ -45,7 +45,7 @@ def _of_start(problem):
         yield (
             "assumed-piece",
             "the fault between its last known point and the hanging-wall cut-off is "
-            f"assumed: straight, by {fault.below_from}.",
+            f"assumed, by {fault.below_from}.",
         )
     elif not fault.is_known(np.linspace(foot.x, hang.x, 41), longest).all():
         yield (

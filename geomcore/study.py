@@ -9,12 +9,14 @@ from typing import Optional
 
 import numpy as np
 
+from .assumed import ASSUMED_ERRORS, carry_on, with_assumed_errors
 from .compaction import compaction_from
 from .construction import MarchOptions, predict_fault
 from .cutoffs import (
     CutoffOptions,
     given_cutoffs,
     measure_separation,
+    refuse_reverse,
     regional_and_separation,
     wall_guide,
 )
@@ -584,9 +586,10 @@ def construct(study, frame, picks):
     try:
         require_depth_of(horizon, picks, frame)
         given = given_cutoffs(picks.depth, horizon, options)
+        refuse_reverse(given, f"section {frame.section_id}")
         fault, more = known_fault(picks.depth, given.cutoffs if given else ())
         doubts += more
-        prediction, separation = _predict(
+        fault, prediction, separation = _predict_from(
             study, frame, picks.depth, fault, given, options
         )
         separations.append(separation)
@@ -618,6 +621,40 @@ def require_depth_of(horizon, picks, frame):
             where,
             "Check the section, the corridor and the horizon's name.",
         )
+
+
+def _predict_from(study, frame, picks, known, given, options):
+    """Predict from the known fault, carried on where it ends above the cut-off.
+
+    Returns
+    -------
+    fault : KnownFault
+        With the assumed piece, if there is one.
+    prediction : Prediction
+    separation : SeparationResult
+    """
+    spec = study.construction
+    model = model_named(spec.model, shear_angle=spec.shear_angle)
+    hang_given = given is not None and given.hanging_wall is not None
+
+    def predicted(**errors):
+        fault = known
+        if not hang_given:
+            fault = carry_on(known, picks, spec.horizon, model, **errors)
+        return (fault, *_predict(study, frame, picks, fault, given, options))
+
+    fault, prediction, result = predicted()
+    if hang_given or fault.is_known(prediction.separation.hanging_wall.x):
+        return fault, prediction, result
+    variants = []
+    for name, size in ASSUMED_ERRORS.items():
+        change = size if name == "dip_change" else 1.0 - size
+        try:
+            variants.append(predicted(**{name: change})[1])
+        except GeomcoreError:
+            continue  # that far off there is no solution at all
+    prediction = with_assumed_errors(prediction, variants)
+    return fault, prediction, replace(result, separation=prediction.separation)
 
 
 def _predict(study, frame, picks, fault, given, options):
