@@ -6,9 +6,10 @@ from typing import Optional
 import numpy as np
 
 from .errors import ConstructionError, Doubt, PicksError
-from .fault import KnownFault, known_fault
+from .fault import known_fault
 from .profile import fit_line, profile_from_picks
 from .separation import CutOff, Separation, extend_to_fault, level_separation
+from .walls import upright_line
 
 __all__ = [
     "CutoffOptions",
@@ -17,9 +18,14 @@ __all__ = [
     "SeparationResult",
     "given_cutoffs",
     "measure_separation",
+    "refuse_reverse",
     "regional_and_separation",
     "wall_guide",
 ]
+
+
+#: How a cut-off came about that is the last pick before the fault gap.
+EDGE = "edge of the fault gap"
 
 
 @dataclass(frozen=True)
@@ -96,22 +102,25 @@ def wall_guide(picks, other=None):
                     if len(picks)
                     else 0.0
                 )
-                return _upright(float(0.5 * (marks.x.min() + marks.x.max())), z)
+                return upright_line(0.5 * (marks.x.min() + marks.x.max()), z)
     return None
 
 
-def _upright(x, z):
-    return KnownFault(np.array([x]), np.array([z]), 0.0, -1e6, -1e6, "an upright line")
-
-
 def _block_level(picks, horizon, side, at, options):
-    """Level of a horizon in one block, carried straight to a place; None if unknown."""
+    """Level of a horizon in one block, carried straight to a place; None if unknown.
+
+    Carried by a line through the picks between the distances of `options`: their
+    middle alone would mistake a dip for a change of level. Two picks carry no line;
+    they give their mean.
+    """
     bed = picks.of("horizon", horizon)
     d = side * (bed.x - at)
     near = (d >= options.separation_from) & (d <= options.separation_to)
     if near.sum() < 2:
         return None
-    return float(np.median(bed.z[near]))
+    if near.sum() == 2 or np.ptp(d[near]) == 0:
+        return float(bed.z[near].mean())
+    return float(np.polyval(np.polyfit(d[near], bed.z[near], 1), 0.0))
 
 
 def given_cutoffs(picks, horizon, options):
@@ -171,6 +180,34 @@ def given_cutoffs(picks, horizon, options):
         _as_cutoff(free, first, "footwall"),
         _as_cutoff(free, second, "hanging wall"),
         doubts,
+    )
+
+
+def refuse_reverse(given, where):
+    """Refuse to construct from cut-offs that overlap.
+
+    Parameters
+    ----------
+    given : GivenCutoffs or None
+    where : str
+        Section, for the message.
+
+    Raises
+    ------
+    ConstructionError
+        With code ``reverse-separation`` if the hanging-wall cut-off does not lie
+        beyond the footwall's: there is no heave to construct with.
+    """
+    foot = given.footwall if given else None
+    hang = given.hanging_wall if given else None
+    if foot is None or hang is None or hang.x > foot.x:
+        return
+    raise ConstructionError(
+        "reverse-separation",
+        f"the hanging-wall cut-off lies {foot.x - hang.x:.1f} behind the footwall "
+        "cut-off (reverse separation); the construction holds for normal faults.",
+        where,
+        "Check the cut-offs and the hanging-wall side.",
     )
 
 
@@ -252,9 +289,23 @@ def measure_separation(picks, fault, horizon, options):
     foot = foot or _found_cutoff(footwall, fault, "footwall", where)
     hang = hang or _found_cutoff(hanging, fault, "hanging wall", where)
     separation = Separation(horizon, foot, hang, picks.domain)
-    return _with_level(
-        separation, footwall, hanging, options, given.doubts if given else ()
+    doubts = list(given.doubts) if given else []
+    doubts += _gap_doubts(separation, footwall, hanging, where)
+    return _with_level(separation, footwall, hanging, options, doubts)
+
+
+def _gap_doubts(separation, footwall, hanging, where):
+    """Doubt a gap that is no wider than the picks are apart anyway."""
+    if EDGE not in (separation.footwall.how, separation.hanging_wall.how):
+        return []
+    near = np.r_[np.diff(footwall.x[-9:]), np.diff(hanging.x[:9])]
+    if not len(near) or separation.heave > 1.5 * np.median(near):
+        return []
+    text = (
+        "no gap shows in the picks at the fault: heave and throw are those of "
+        "neighbouring picks, only the level difference means something."
     )
+    return [Doubt("no-gap", text, where)]
 
 
 def _with_level(separation, footwall, hanging, options, doubts):
@@ -284,7 +335,7 @@ def _found_cutoff(profile, fault, wall, where):
         float(profile.z[i]),
         0.0,
         float(profile.sigma[i]),
-        "edge of the fault gap",
+        EDGE,
     )
 
 
@@ -318,14 +369,7 @@ def regional_and_separation(picks, fault, horizon, model, spec, given, options):
     foot = given.footwall if given else None
     hang = given.hanging_wall if given else None
     doubts = list(given.doubts) if given else []
-    if given and foot and hang and hang.x <= foot.x:
-        raise ConstructionError(
-            "reverse-separation",
-            f"the hanging-wall cut-off lies {foot.x - hang.x:.1f} behind the footwall "
-            "cut-off (reverse separation); the construction holds for normal faults.",
-            where,
-            "Check the cut-offs and the hanging-wall side.",
-        )
+    refuse_reverse(given, where)
     if hang is None:
         hang, _ = extend_to_fault(hanging, fault, "hanging wall", where)
     far = _far_picks(hanging, fault, spec)
@@ -433,8 +477,10 @@ def _level_doubts(regional, footwall, where):
     """Doubt a footwall horizon that is not straight within its stated sigma."""
     if not regional.n_picks or len(footwall) < 5:
         return []
-    miss = (footwall.z - regional(footwall.x)) / np.maximum(footwall.sigma, 1e-3)
-    rms = float(np.sqrt((miss**2).mean()))
+    miss = footwall.z - regional(footwall.x)
+    if not footwall.sigma.any():
+        return _unstated_doubts(miss, where)
+    rms = float(np.sqrt(((miss / np.maximum(footwall.sigma, 1e-3)) ** 2).mean()))
     if rms <= 2.0:
         return []
     return [
@@ -445,3 +491,15 @@ def _level_doubts(regional, footwall, where):
             where,
         )
     ]
+
+
+def _unstated_doubts(miss, where):
+    """Say by how much picks without a stated sigma miss the regional."""
+    rms = float(np.sqrt((miss**2).mean()))
+    if rms <= 0.05:
+        return []  # what rounding leaves
+    text = (
+        f"the footwall picks miss the straight regional by {rms:.1f} (root mean "
+        "square); no sigma is stated for them."
+    )
+    return [Doubt("regional-misfit", text, where)]

@@ -11,6 +11,7 @@ from .section import (
     parse_azimuth,
     transport_azimuth,
 )
+from .separation import CUTOFF_PICKS
 from .sources import Features
 
 __all__ = ["resolve_transport", "trace_parts"]
@@ -96,30 +97,32 @@ def resolve_transport(study, prepared, lines):
 def _transport_from_levels(study, prepared, lines, strike):
     """Take the lower block of the horizon as the hanging wall."""
     right = (strike + 90.0) % 360.0
-    votes, options = 0.0, PullOptions(study.picks.corridor)
     drawn = [line.vertices for line in lines or ()]
-    for i, vertices in enumerate(drawn or _trial_lines(study, prepared, right)):
-        try:
-            frame = SectionFrame(f"trial {i + 1}", vertices, right)
-            tables = [pull_source(p, frame, options) for p in prepared.values()]
-        except GeomcoreError:
-            continue
-        for domain in ("depth", "time"):
-            own = [t for t in tables if t.domain == domain]
-            table = Picks.empty(frame.section_id, domain).joined(own)
-            votes += _lower_side(table, study.construction.horizon)
-    if votes == 0:
+    drawn = drawn or _trial_lines(study, prepared, right)
+    sides = np.array(
+        [
+            _side_of(study, prepared, f"trial {i + 1}", vertices, right)
+            for i, vertices in enumerate(drawn)
+        ]
+    )
+    sides = sides[sides != 0]
+    if not sides.sum():
+        tells = "the sections do not agree" if len(sides) else "nothing tells"
         raise FrameError(
             "no-side",
-            "nothing tells which side of the fault is the hanging wall.",
+            f"{tells} which side of the fault is the hanging wall.",
             remedy="Declare hw_side, dips of the fault, or the transport azimuth.",
         )
-    azimuth = right if votes > 0 else (right + 180.0) % 360.0
-    return (
-        azimuth,
+    way = np.sign(sides.sum())
+    azimuth = right if way > 0 else (right + 180.0) % 360.0
+    how = (
         f"normal to the mean strike {strike:.1f}, towards the lower block of "
-        f"{study.construction.horizon}",
+        f"{study.construction.horizon}"
     )
+    agree = int((sides == way).sum())
+    if agree < len(sides):
+        how += f" (in {agree} of {len(sides)} sections)"
+    return azimuth, how
 
 
 def _trial_lines(study, prepared, transport):
@@ -132,17 +135,52 @@ def _trial_lines(study, prepared, transport):
     return parallel_sections(trace, transport, spec.spacing, spec.count, length, length)
 
 
-def _lower_side(picks, horizon):
-    """+1 if the horizon is lower beyond the fault (in x), -1 if before it, else 0."""
+def _side_of(study, prepared, name, vertices, azimuth):
+    """+1 if the horizon along a line is lower along an azimuth, -1 against it, or 0."""
+    spec = study.picks
+    options = PullOptions(spec.corridor, 0.0, spec.grid_step)
+    try:
+        frame = SectionFrame(name, vertices, azimuth)
+        tables = [pull_source(p, frame, options) for p in prepared.values()]
+    except GeomcoreError:
+        return 0.0  # a line that gives no frame is reported when frames are made
+    drops = 0.0
+    for domain in ("depth", "time"):
+        own = [t for t in tables if t.domain == domain]
+        table = Picks.empty(frame.section_id, domain).joined(own)
+        drops += _lower_side(table, study.construction.horizon, spec)
+    return float(np.sign(drops))
+
+
+def _lower_side(picks, horizon, spec):
+    """+1 if the horizon is lower beyond the fault (in x), -1 if before it, else 0.
+
+    Each block's level is carried straight to the fault, so that a regional dip is not
+    taken for a throw.
+    """
     marks = np.r_[picks.of("fault").x, picks.of("cutoff").x]
     bed = picks.of("horizon", horizon)
     if not len(marks) or not len(bed):
         return 0.0
-    near = np.abs(bed.x - marks.mean()) < 0.25 * max(np.ptp(bed.x), 1e-9)
-    before, beyond = (
-        bed.z[near & (bed.x < marks.min())],
-        bed.z[near & (bed.x > marks.max())],
-    )
-    if not len(before) or not len(beyond):
+    before = _level_at(bed, marks.min(), -1, spec)
+    beyond = _level_at(bed, marks.max(), 1, spec)
+    if before is None or beyond is None:
         return 0.0
-    return float(np.sign(np.median(before) - np.median(beyond)))
+    return float(np.sign(before - beyond))
+
+
+def _level_at(bed, at, side, spec):
+    """Level of a bed carried straight to a place from one side; None without picks.
+
+    From the picks between the distances of the study, else from the nearest
+    `CUTOFF_PICKS`; two picks or fewer give their mean.
+    """
+    d = side * (bed.x - at)
+    near = (d >= spec.separation_from) & (d <= spec.separation_to)
+    if near.sum() < 3:
+        order = np.argsort(np.where(d > 0, d, np.inf), kind="stable")
+        near = order[: min(CUTOFF_PICKS, int((d > 0).sum()))]
+    d, z = d[near], bed.z[near]
+    if len(d) < 3 or np.ptp(d) == 0:
+        return float(z.mean()) if len(z) else None
+    return float(np.polyval(np.polyfit(d, z, 1), 0.0))

@@ -10,6 +10,7 @@ from geomcore.cutoffs import (
     CutoffOptions,
     given_cutoffs,
     measure_separation,
+    refuse_reverse,
     regional_and_separation,
     wall_guide,
 )
@@ -486,3 +487,62 @@ def test_regional_that_cannot_be_found_is_refused_with_its_section(picks, spec, 
         regional(picks, spec)
     assert caught.value.code == code
     assert "section S1" in str(caught.value)
+
+
+@pytest.mark.parametrize("crossed", [False, True])
+def test_dip_of_the_horizon_is_not_taken_for_its_change_of_level(crossed):
+    """Each block is carried to the cut-off along its own dip before levels count.
+
+    Both blocks dip by 0.3 towards the hanging wall: over the 425 between the picks'
+    middles and the fault that is more than the throw of 60.
+    """
+    x = np.r_[np.arange(-700.0, -49.0, 50.0), np.arange(150.0, 801.0, 50.0)]
+    z = -1000.0 - 0.3 * x - np.where(x > 0, 60.0, 0.0)
+    # the footwall's cut-off and the hanging wall's; an overlap has them crossed
+    foot, hang = (100.0, 0.0) if crossed else (0.0, 100.0)
+    cut = {foot: -1000.0 - 0.3 * foot, hang: -1060.0 - 0.3 * hang}
+    marks = mark(sorted(cut), [cut[v] for v in sorted(cut)])
+    given = given_cutoffs(joined(table(x, z), marks), "A", OPTIONS)
+    assert (given.footwall.x, given.hanging_wall.x) == (foot, hang)
+
+
+def test_overlap_is_refused_before_a_fault_is_asked_for():
+    """Crossed cut-offs are named as such even where nothing else is known."""
+    low, high = straight(-500.0, 0.0, 0.0, 900.0), straight(-600.0, 0.0, 700.0, 1600.0)
+    beds = joined(table(low.x, low.z), table(high.x, high.z))
+    overlap = joined(beds, mark([700.0, 900.0], [-600.0, -500.0]))
+    with pytest.raises(ConstructionError, match="reverse separation") as caught:
+        refuse_reverse(given_cutoffs(overlap, "A", OPTIONS), "section S1")
+    assert caught.value.code == "reverse-separation"
+    gap = joined(
+        beds, mark([700.0, 900.0], [-500.0, -600.0], ["footwall", "hanging wall"])
+    )
+    refuse_reverse(given_cutoffs(gap, "A", OPTIONS), "section S1")
+    refuse_reverse(None, "section S1")
+
+
+def test_horizon_without_a_gap_gives_no_heave_without_a_doubt():
+    """Picks that run through the fault tell a level difference, not a heave."""
+    x = np.arange(-1000.0, 1001.0, 50.0)
+    z = np.where(x < 0, -900.0, -960.0)
+    wall = np.where(x < 0, "footwall", "hanging wall")
+    whole = table(x, z, wall=wall, domain="time")
+    doubts = measure_separation(whole, None, "A", OPTIONS).doubts
+    assert [d.code for d in doubts] == ["no-gap"]
+    apart = whole.select(np.abs(x) > 110.0)
+    assert not measure_separation(apart, None, "A", OPTIONS).doubts
+
+
+@pytest.mark.parametrize("miss", [0.0, 8.0])
+def test_regional_misfit_of_picks_without_sigma_is_said_in_length(miss):
+    """Without a stated sigma there is no ratio to it; the misfit itself is told."""
+    picks = blocks(sigma=0.0)
+    foot = picks.wall == "footwall"
+    bent = np.where(foot, picks.z + miss * np.sign(np.sin(picks.x / 110.0)), picks.z)
+    picks = table(picks.x, bent, wall=picks.wall, sigma=0.0)
+    doubts = [d for d in regional(picks).doubts if d.code == "regional-misfit"]
+    if miss:
+        assert "no sigma is stated" in doubts[0].text
+        assert "by 7." in doubts[0].text or "by 8." in doubts[0].text
+    else:
+        assert not doubts

@@ -112,3 +112,43 @@ def test_points_alone_have_no_strike():
     with pytest.raises(FrameError, match="strike") as caught:
         resolved(document, trace=Features.points([(0, 0)], 0.0))
     assert caught.value.code == "no-strike"
+
+
+@pytest.mark.parametrize("dip", [-0.1, 0.1])
+def test_regional_dip_is_not_taken_for_a_throw(dip):
+    """Levels are carried to the fault: over kilometres a dip outweighs a throw."""
+
+    def level(xy):
+        return -500.0 + dip * xy[:, 0] - np.where(xy[:, 0] < 0, 0.0, 60.0)
+
+    got, _ = resolved(UNTOLD, [ACROSS], tops=Grid(level, cell=50.0))
+    assert got == pytest.approx(90.0)
+
+
+def test_sections_that_disagree_are_counted():
+    """The majority decides, and the count is told; an even split is refused."""
+
+    def level(xy):
+        lower_east = np.where(xy[:, 0] < 0, -500.0, -900.0)
+        return np.where(xy[:, 1] > 1000.0, -1400.0 - lower_east, lower_east)
+
+    tops = Grid(level, cell=50.0)
+    lines = [
+        SectionLine(f"S{y}", np.array([(-4000.0, y), (4000.0, y)]))
+        for y in (-1000.0, 0.0, 2000.0)
+    ]
+    got, how = resolved(UNTOLD, lines, tops=tops)
+    assert got == pytest.approx(90.0)
+    assert "in 2 of 3 sections" in how
+    with pytest.raises(FrameError, match="do not agree") as caught:
+        resolved(UNTOLD, lines[1:], tops=tops)
+    assert caught.value.code == "no-side"
+
+
+def test_few_picks_far_from_the_fault_still_tell_the_side():
+    """Crossings with widely spaced contours lie outside the fit distances."""
+    x = np.array([-3000.0, -2000.0, -900.0, 900.0, 2000.0, 3000.0])
+    points = Features.points(
+        np.column_stack([x, 0 * x]), np.where(x < 0, -500.0, -900.0)
+    )
+    assert resolved(UNTOLD, [ACROSS], tops=points)[0] == pytest.approx(90.0)

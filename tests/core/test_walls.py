@@ -7,7 +7,13 @@ import pytest
 from worlds import EXPONENTIAL, joined, table
 
 from geomcore.fault import KnownFault, known_fault
-from geomcore.walls import assign_walls, leave_out_near_fault, tracked_gap
+from geomcore.walls import (
+    assign_walls,
+    is_upright,
+    leave_out_near_fault,
+    tracked_gap,
+    upright_line,
+)
 
 PLANE = KnownFault(
     np.array([0.0, 1000.0]),
@@ -138,3 +144,61 @@ def test_tracked_values_are_left_out_with_their_count_and_reason():
     assert set(kept.reason[inside]) == {"tracked across the fault gap"}
     untouched = leave_out_near_fault(picks, PLANE, 0.0, gridded=["other"])
     assert untouched.used.all()
+
+
+def ledges(quiet, step=25.0, throw=80.0):
+    """A tracked time horizon that falls over its gap in two jumps with a ledge between.
+
+    The gap begins at x = 0; `quiet` samples lie on the ledge.
+    """
+    x = np.arange(-1000.0, 1001.0, step)
+    gap = (quiet + 1) * step
+    z = -900.0 - np.select([x <= 0, x < gap], [0.0, 0.5 * throw], throw)
+    z = z + 0.1 * np.sin(x)  # the tracker's own unrest
+    return x, z, (x > 0) & (x < gap)
+
+
+@pytest.mark.parametrize("quiet", [1, 3, 6])
+def test_ledges_of_a_tracker_belong_to_the_gap(quiet):
+    """Autotracked horizons come down a fault in jumps, with quiet samples between."""
+    x, z, inside = ledges(quiet)
+    guide = upright_line(0.5 * (quiet + 1) * 25.0, -900.0)
+    assert tracked_gap(x, z, guide).tolist() == inside.tolist()
+
+
+def test_next_fault_far_beyond_is_another_one():
+    """A step that stands farther off than a ledge is long is not joined."""
+    x, z, _ = ledges(12)
+    found = tracked_gap(x, z, upright_line(12.5, -900.0))
+    assert not found.any()  # one step between neighbouring samples has none inside
+
+
+def test_gentle_drag_beside_a_steep_gap_is_kept():
+    """A bend a fifth as steep as the gap is the horizon's own."""
+    x = np.arange(-1000.0, 1001.0, 25.0)
+    drag = -0.2 * np.clip(x + 150.0, 0.0, 150.0)
+    z = -900.0 + drag - np.clip(x, 0.0, 100.0) + 0.1 * np.sin(x)
+    found = tracked_gap(x, z, upright_line(50.0, -950.0))
+    assert found.tolist() == ((x > 0) & (x < 100)).tolist()
+
+
+@pytest.mark.parametrize("off", [-120.0, 0.0, 120.0])
+def test_walls_of_a_tracked_time_horizon_follow_its_gap_not_the_trace(off):
+    """A trace some samples off the gap does not put picks into the wrong wall."""
+    x, z, inside = ledges(3)
+    guide = upright_line(50.0 + off, -900.0)
+    assert is_upright(guide)
+    picks = assign_walls(table(x, z, domain="time", source="tracked"), guide)
+    picks = leave_out_near_fault(picks, guide, 0.0, ["tracked"])
+    assert picks.used.tolist() == (~inside).tolist()
+    expected = np.where(x <= 0, "footwall", "hanging wall")[~inside]
+    assert picks.wall[~inside].tolist() == expected.tolist()
+
+
+def test_known_fault_outranks_the_gap_for_the_walls():
+    """Where the fault is known, its dip tells the walls at every depth."""
+    x, z, _ = surface()
+    assert not is_upright(PLANE)
+    picks = assign_walls(table(x, z, source="grid"), PLANE)
+    kept = leave_out_near_fault(picks, PLANE, 0.0, ["grid"])
+    assert kept.wall.tolist() == picks.wall.tolist()
