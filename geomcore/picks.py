@@ -294,8 +294,9 @@ class PreparedSource:
         return len(self.data.fid) + sum(self.data.refused.values())
 
 
-def _range(values):
-    known = values[np.isfinite(values)]
+def _range(values, unknown):
+    """Least and largest of the known values."""
+    known = values[~unknown] if unknown.any() else values
     return (float(known.min()), float(known.max())) if known.size else (np.nan, np.nan)
 
 
@@ -336,7 +337,7 @@ def prepare_source(declaration, data, length_unit):
         data,
         converted.value,
         refused,
-        _range(np.where(converted.unknown, np.nan, data.value)),
+        _range(data.value, converted.unknown),
         length_unit,
         runs=None if is_point else _runs(data),
         cells=CellIndex.build(data.xy) if is_point else None,
@@ -377,15 +378,20 @@ def _runs(data):
     if not len(first):
         none = np.empty((0, 2))
         return _Runs(first, last, none, none, CellIndex.build(none))
-    low, high = (_reduced(f, data.xy, first, last) for f in (np.minimum, np.maximum))
+    low, high = _boxes(data.xy, first, last)
     cells = CellIndex.build(low, high)
     return _Runs(first, last, 0.5 * (low + high), 0.5 * (high - low), cells)
 
 
-def _reduced(extreme, xy, first, last):
-    """Least or largest coordinates of runs; one may take in a point beyond its end."""
-    columns = [extreme.reduceat(np.ascontiguousarray(c), first) for c in xy.T]
-    return extreme(np.column_stack(columns), xy[last])
+def _boxes(xy, first, last):
+    """Boxes round runs of vertices; one may take in a point beyond its run's end."""
+    low, high = np.empty((2, len(first), 2))
+    for k in (0, 1):
+        column = np.ascontiguousarray(xy[:, k])
+        end = column[last]
+        low[:, k] = np.minimum(np.minimum.reduceat(column, first), end)
+        high[:, k] = np.maximum(np.maximum.reduceat(column, first), end)
+    return low, high
 
 
 def _leg_crossings(runs, xy, a, b):

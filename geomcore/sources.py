@@ -379,15 +379,27 @@ def to_vertical(declaration, raw, length_unit):
     array([-304.8,    nan])
     """
     raw = np.asarray(raw, dtype=float)
-    code = np.where(np.isfinite(raw), 0, 1).astype(np.int8)
-    with np.errstate(invalid="ignore"):
-        coded = np.abs(raw) >= 1e20
-    for null in declaration.null_values:
-        coded |= raw == null
-    code[coded & (code == 0)] = 2
+    code = _unknown_codes(raw, declaration.null_values)
     up = vertical_factor(declaration, length_unit)
     value = up * raw + declaration.datum_elevation * abs(up)
-    return Converted(np.where(code > 0, np.nan, value), code)
+    return Converted(np.where(code > 0, np.nan, value) if code.any() else value, code)
+
+
+def _unknown_codes(raw, nulls):
+    """Why values are unknown, as places in `_REASONS`."""
+    code = np.zeros(raw.shape, dtype=np.int8)
+    low, high = (
+        np.fmin.reduce(raw, None, initial=0),
+        np.fmax.reduce(raw, None, initial=0),
+    )
+    # most null codes lie outside the range of the values and need no comparison
+    for null in nulls:
+        if low <= null <= high:
+            code[raw == null] = 2
+    if low <= -1e20 or high >= 1e20:
+        code[np.abs(raw) >= 1e20] = 2
+    code[~np.isfinite(raw)] = 1
+    return code
 
 
 def vertical_factor(declaration, length_unit):

@@ -126,9 +126,7 @@ def _all_single(geometries):
         body = np.ascontiguousarray(raw[:, 5:])
         count = np.ones(n, dtype=np.int64)
     else:
-        body = np.frombuffer(
-            b"".join([memoryview(g)[9:] for g in geometries]), np.uint8
-        )
+        body = np.frombuffer(b"".join([g[9:] for g in geometries]), np.uint8)
         sizes = np.fromiter(map(len, geometries), dtype=np.int64, count=n)
         count = (sizes - 9) // (8 * width)
     rows = body.view(_NATIVE + "f8").reshape(-1, width)
@@ -257,8 +255,7 @@ def _gather(data, kind, owner, start, count, width):
 
 def _doubles(data, start, size):
     """Give the doubles of byte runs, one run after the other."""
-    view = memoryview(data)
-    runs = [view[a:b] for a, b in zip(start.tolist(), (start + size).tolist())]
+    runs = [data[a:b] for a, b in zip(start.tolist(), (start + size).tolist())]
     return np.frombuffer(b"".join(runs), dtype=_NATIVE + "f8")
 
 
