@@ -353,7 +353,9 @@ def _trace(problem, solution, x, z):
     first = strip == 0
     known = fault.is_known(full_x[first], ASSUMED_GAP * problem.separation.heave)
     state[first] = np.where(known, "known", "assumed")
-    state[:n] = "known"
+    # the points of the fault themselves are known, be there only one of them
+    observed = np.arange(n) < (n if fault.observed is None else fault.observed)
+    state[:n] = np.where(observed, "known", "assumed")
     if solution.reach is not None:
         state[n:][~solution.reach & ~first[n:]] = "out of reach"
     return FaultTrace(

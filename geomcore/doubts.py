@@ -31,7 +31,7 @@ def march_doubts(problem, solution, trace, detachment):
         *_of_bed(problem),
         *_of_shear(problem),
         *_of_compaction(problem),
-        *_of_trace(trace),
+        *_of_trace(solution, trace),
         *_of_reach(solution, detachment),
         *_of_strips(problem, solution),
     ]
@@ -112,20 +112,31 @@ def _of_compaction(problem):
         )
 
 
-def _of_trace(trace):
-    dip = np.degrees(np.arctan2(-np.diff(trace.z), np.diff(trace.x)))
-    predicted = trace.strip[1:] > 0
-    if not predicted.any():
+def _of_trace(solution, trace):
+    """Doubt a fault that rises outwards by more than noise, or is very steep.
+
+    Judged over a third of a strip: pick noise wriggles the march over less, and
+    grows with the root of the number of strips.
+    """
+    step = max(1, solution.start // 3)
+    first = int(np.argmax(trace.strip > 0))
+    x, z, strip = (v[first:] for v in (trace.x, trace.z, trace.strip))
+    if len(x) <= step or strip[0] == 0:
         return
-    dip, x = dip[predicted], trace.x[1:][predicted]
-    if dip.min() < -2.0:
-        at = x[int(np.argmin(dip))]
+    dx, drop = x[step:] - x[:-step], z[:-step] - z[step:]
+    noise = np.median(solution.bed.sigma) * np.sqrt(2.0 * strip[step:])
+    dip = np.degrees(np.arctan2(drop, dx))
+    rising = (dip < -2.0) & (-drop > 3.0 * noise)
+    if rising.any():
+        at = x[int(np.argmax(rising))]
         yield "fault-rises", f"the predicted fault rises outwards near x = {at:.0f}."
-    if dip.max() > 80.0:
-        at = x[int(np.argmax(dip))]
+    local = np.degrees(np.arctan2(z[:-1] - z[1:], np.diff(x)))[: len(drop)]
+    steep = np.where(drop > 3.0 * noise, np.maximum(dip, local), 0.0)
+    if steep.max() > 80.0:
+        at = x[int(np.argmax(steep))]
         yield (
             "fault-steep",
-            f"the predicted fault dips {dip.max():.0f} degrees near x = {at:.0f}.",
+            f"the predicted fault dips {steep.max():.0f} degrees near x = {at:.0f}.",
         )
 
 
