@@ -348,6 +348,14 @@ def _after(values, crs, unit, transport, earlier, construction):
             f"layer '{values.layer_name('SECTIONS')}'",
             "Use the section_lines that Pull Picks to Sections writes.",
         )
+    if earlier is not None and earlier.crs != crs:
+        raise StudyError(
+            "other-crs",
+            f"they are in {crs}, but the earlier step ran in {earlier.crs}, and x and "
+            "azimuths hold there only.",
+            f"layer '{values.layer_name('SECTIONS')}'",
+            "Use the section lines as they were written.",
+        )
     datum = values.text("VERTICAL_DATUM") or (earlier.vertical_datum if earlier else "")
     if not datum:
         raise StudyError(

@@ -104,8 +104,9 @@ class Place:
 
     @property
     def crs_text(self):
-        """The CRS as a text that names it fully."""
-        return self.crs.authid() or self.crs.toWkt()
+        """The CRS as a text that names it on every machine."""
+        name = self.crs.authid()
+        return name if name and not name.startswith("USER:") else self.crs.toWkt()
 
 
 # ---- in ----------------------------------------------------------------------------
@@ -455,13 +456,12 @@ def publish(made, folder):
     made : pathlib.Path
         Folder they were drawn into.
     folder : pathlib.Path
-        Made if it is not there; figures of the same name are replaced.
+        Figures of the same name in it are replaced.
 
     Returns
     -------
     list of pathlib.Path
     """
-    folder.mkdir(parents=True, exist_ok=True)
     placed = []
     for path in sorted(made.iterdir()):
         half = folder / f".{path.name}.part"

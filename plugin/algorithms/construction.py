@@ -52,8 +52,11 @@ class ConstructingAlgorithm(Algorithm):
                 steps.next("Drawing the sections")
                 draw_plots(run, Path(drawn), steps)
             steps.next("Writing the results")
+            steps.check()
             if not values.has("OUTPUT"):  # where the study says, folder and all
                 path.parent.mkdir(parents=True, exist_ok=True)
+            if plots:  # before the layers: a folder that cannot be made stops them
+                plots.mkdir(parents=True, exist_ok=True)
             names = write(tables, run.study, path, place, steps)
             if plots:
                 publish(Path(drawn), plots)

@@ -94,7 +94,10 @@ class PullPicks(Algorithm):
 
         declarations, base = self._declared_sources(values)
         place = self.place(values, "SECTIONS", base)
-        transport = known_transport(values.source("SECTIONS"))
+        sections = values.source("SECTIONS")
+        # a grid azimuth holds in its own CRS only
+        same = sections.sourceCrs() == place.crs
+        transport = known_transport(sections) if same else None
         study = picks_study(values, place.crs_text, place.unit, declarations, transport)
         return study, place
 

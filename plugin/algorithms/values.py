@@ -237,16 +237,18 @@ def read_text(path):
 
 
 def _public_source(layer):
-    """Give the source of a layer without user name and password."""
-    from qgis.core import QgsDataSourceUri, QgsProviderRegistry
+    """Give the source of a layer as a study names it, without user and password."""
+    from qgis.core import QgsDataSourceUri
 
     provider = layer.providerType()
     if provider == "memory":
-        return ""
-    parts = QgsProviderRegistry.instance().decodeUri(provider, layer.source())
-    if "path" in parts:
-        return layer.source()
-    uri = QgsDataSourceUri(layer.source())
-    uri.setUsername("")
-    uri.setPassword("")
-    return f"{provider}://{uri.uri(False)}"
+        return ""  # a scratch layer cannot be found again
+    source = QgsDataSourceUri.removePassword(layer.source())
+    if provider in ("ogr", "gdal"):
+        return source
+    uri = QgsDataSourceUri(source)
+    if uri.username() or uri.password():
+        uri.setUsername("")
+        uri.setPassword("")
+        source = uri.uri(False)
+    return f"{provider}://{source}" if uri.table() else f"{provider}:{source}"

@@ -824,6 +824,40 @@ def test_drawn_sections_without_transport_are_refused(pulled, layers, tmp_path):
     assert "layer 'sections'" in sentence
 
 
+def test_reprojected_sections_are_refused(pulled, tmp_path):
+    """X and azimuths hold in the CRS of the picks only."""
+    import processing
+
+    parameters = {
+        "INPUT": pulled["SECTION_LINES"],
+        "TARGET_CRS": "EPSG:32634",
+        "OUTPUT": "memory:",
+    }
+    moved = processing.run("native:reprojectlayer", parameters)["OUTPUT"]
+    sentence = refused(
+        "predictfault", prediction(pulled, tmp_path / "f.gpkg", SECTIONS=moved)
+    )
+    assert "EPSG:32634" in sentence
+    assert "EPSG:32633" in sentence
+
+
+def test_azimuth_of_another_crs_is_not_taken(layers, tmp_path):
+    """Section lines from another zone keep their place, not their grid azimuth."""
+    sections = run("parallelsections", parallel(layers, tmp_path / "s.gpkg"))
+    result = run(
+        "pullpicks",
+        layers.pull(
+            tmp_path / "p.gpkg",
+            SECTIONS=sections["SECTION_LINES"],
+            SECTION_ID=None,
+            CRS="EPSG:32632",
+        ),
+    )
+    azimuths = {r["transport_azimuth"] for r in rows(result["OUTPUT"], "section_lines")}
+    # 6 degrees of longitude from its zone's middle at 52 degrees north: sin(52) * 6
+    assert azimuths.pop() == pytest.approx(110.0 - 4.74, abs=0.1)
+
+
 def test_picks_without_their_run_need_a_datum(pulled, tmp_path):
     """A picks layer copied elsewhere has lost its datum, which has to be said again."""
     from qgis.core import QgsVectorLayer
@@ -1100,6 +1134,33 @@ def test_steps_give_what_the_study_gives(study_file, layers, tmp_path):
     )
 
 
+def test_names_with_accents_blanks_and_quotes_are_taken(study_file, tmp_path):
+    """A folder named as people name folders is no obstacle."""
+    folder = tmp_path / "Bohrung Süd, d'Été & 2"
+    study_file.parent.rename(folder)
+    result = run("runstudy", {"STUDY": str(folder / "study.json")})
+    assert result["SOLVED"] == 3
+    assert vertices(result["PREDICTED_FAULT_TRACES"]).keys() == {"S01", "S02", "S03"}
+    assert len(list((folder / "results" / "plots").glob("*.png"))) == 3
+
+
+def test_plots_go_to_a_temporary_folder_too(study_file, tmp_path):
+    """Plots left to a temporary folder are drawn there."""
+    parameters = {"STUDY": str(study_file), "OUTPUT": str(tmp_path / "o.gpkg")}
+    result = run("runstudy", {**parameters, "PLOTS": "TEMPORARY_OUTPUT"})
+    assert len(list(Path(result["PLOTS"]).glob("*.png"))) == 3
+
+
+def test_plots_that_have_no_place_stop_the_run(study_file, tmp_path):
+    """Where the folder of the figures cannot be made, no layer is written either."""
+    (tmp_path / "plots").write_text("a file", encoding="utf-8")
+    output = tmp_path / "o.gpkg"
+    parameters = {"STUDY": str(study_file), "OUTPUT": str(output)}
+    parameters["PLOTS"] = str(tmp_path / "plots")
+    assert "plots" in refused("runstudy", parameters)
+    assert not output.exists()
+
+
 @pytest.mark.parametrize(
     ("entries", "words"),
     [
@@ -1296,26 +1357,46 @@ def test_style_of_the_user_is_kept_on_the_next_run(qgis_app):
     assert layer.loaded == 1
 
 
-def test_password_is_not_recorded(qgis_app):
-    """Of a database layer the record keeps where it is, not who asked and how."""
+@pytest.mark.parametrize(
+    ("provider", "source", "start", "kept"),
+    [
+        (
+            "postgres",
+            "dbname='geo' host=db port=5432 user='me' password='secret' "
+            'authcfg=abc1234 table="public"."faults" (geom)',
+            "postgres://",
+            ["abc1234", '"faults"'],
+        ),
+        (
+            "WFS",
+            "srsname='EPSG:32633' typename='faults' url='https://maps.example/wfs' "
+            "username='me' password='secret'",
+            "WFS:",
+            ["maps.example", "faults"],
+        ),
+        ("delimitedtext", "file:///data/a.csv?xField=x", "delimitedtext:", ["a.csv"]),
+        ("ogr", "data/a.gpkg|layername=b", "data/a.gpkg", ["layername=b"]),
+        ("memory", "LineString?crs=EPSG:32633", "", []),
+    ],
+    ids=["database", "service", "text file", "file", "scratch layer"],
+)
+def test_record_says_where_a_layer_is_without_passwords(
+    qgis_app, provider, source, start, kept
+):
+    """The record keeps where a layer is, never a password."""
     from heaveline.plugin.algorithms.values import _public_source
 
     class Layer:
         def providerType(self):
-            return "postgres"
+            return provider
 
         def source(self):
-            return (
-                "dbname='geo' host=db port=5432 user='me' password='secret' "
-                'authcfg=abc1234 table="public"."faults" (geom)'
-            )
+            return source
 
     uri = _public_source(Layer())
-    assert uri.startswith("postgres://")
+    assert uri.startswith(start)
     assert "secret" not in uri
-    assert "user=" not in uri
-    assert "abc1234" in uri
-    assert '"faults"' in uri
+    assert [word for word in kept if word not in uri] == []
 
 
 # ---- models, batch, command line ---------------------------------------------------
