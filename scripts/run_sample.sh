@@ -15,7 +15,9 @@ LOG=$SAMPLE/run.log
 rm -rf "$SAMPLE"
 mkdir -p "$SAMPLE"
 
-qgis_process plugins enable heaveline > "$LOG" 2>&1 || {
+# QGIS calls a plugin that is enabled already an error
+qgis_process plugins enable heaveline > "$LOG" 2>&1 ||
+    grep -q 'already enabled' "$LOG" || {
     cat "$LOG" >&2
     die "QGIS could not start the plugin"
 }
