@@ -106,24 +106,35 @@ def with_assumed_errors(prediction, variants):
     """
     trace, separation = prediction.trace, prediction.separation
     variance = trace.sigma_z**2
-    moved_x = moved_z = 0.0
     for variant in variants:
         other = variant.trace
         end = np.interp(trace.x, other.x, other.z) - trace.z
         variance = variance + np.where(trace.constrained == "known", 0.0, end**2)
-        hang = variant.separation.hanging_wall
-        moved_x += (hang.x - separation.hanging_wall.x) ** 2
-        moved_z += (hang.z - separation.hanging_wall.z) ** 2
-    hang = separation.hanging_wall
-    hang = replace(
-        hang,
-        sigma_x=float(np.sqrt(hang.sigma_x**2 + moved_x)),
-        sigma_z=float(np.sqrt(hang.sigma_z**2 + moved_z)),
+    # the regional meets the assumed piece too where nothing of it is observed
+    separation = replace(
+        separation,
+        footwall=_widened(prediction, variants, "footwall"),
+        hanging_wall=_widened(prediction, variants, "hanging_wall"),
     )
     return replace(
         prediction,
         trace=replace(trace, sigma_z=np.sqrt(variance)),
-        separation=replace(separation, hanging_wall=hang),
+        separation=separation,
+    )
+
+
+def _widened(prediction, variants, wall):
+    """Give a cut-off with the sigmas that the variants add to it."""
+    own = getattr(prediction.separation, wall)
+    others = [getattr(v.separation, wall) for v in variants]
+    return replace(
+        own,
+        sigma_x=float(
+            np.hypot(own.sigma_x, np.linalg.norm([c.x - own.x for c in others]))
+        ),
+        sigma_z=float(
+            np.hypot(own.sigma_z, np.linalg.norm([c.z - own.z for c in others]))
+        ),
     )
 
 
