@@ -64,8 +64,10 @@ def warnings(rows):
     sections = {}
     for row in rows:
         for text in (row["warnings"] or "").split("\n"):
-            if text.strip():
-                sections.setdefault(text.strip(), []).append(str(row["section_id"]))
+            # the section is named in front already
+            text = text.strip().removeprefix(f"section {row['section_id']}: ")
+            if text:
+                sections.setdefault(text, []).append(str(row["section_id"]))
     for text, names in sections.items():
         yield f"  {', '.join(names)}: {text}"
 
