@@ -22,7 +22,7 @@ NOISE = {
     "contours": 6.0,
     "exposures": 3.0,
     "grid": 8.0,
-    "fault dip": 2.0,
+    "fault dip": 3.0,
     "bed dip": 2.0,
     "azimuth": 2.0,
     "shear angle": 0.5,
@@ -217,7 +217,7 @@ def outcrop_t(s):
         lambda t: truth.ground_z(t, s) - truth.hanging_wall_z(CONTOURED, t, s),
         np.full(s.shape, 10500.0),
         13500.0,
-        steps=44,
+        steps=28,
     )
 
 

@@ -25,7 +25,7 @@ TRANSPORT_AZIMUTH = 118.0
 
 # --- fault: flattens exponentially from its dip at REFERENCE_Z to the detachment
 REFERENCE_Z = 450.0
-SURFACE_DIP = 60.0
+SURFACE_DIP = 62.0
 DETACHMENT_Z = -3900.0
 #: The trace is bowed: at the tips it lies this far towards the hanging wall.
 BOW = 500.0
@@ -73,7 +73,7 @@ def to_local(xy):
     return offset @ along, offset @ strike
 
 
-def bisect(function, low, high, steps=52):
+def bisect(function, low, high, steps=46):
     """Find where a function that falls from + to - between two bounds is zero."""
     low, high = np.broadcast_arrays(np.asarray(low, float), np.asarray(high, float))
     for _ in range(steps):
