@@ -5,6 +5,7 @@ bottom; inside a group points lie over lines, lines over areas and rasters, and 
 stand last.
 """
 
+import math
 import re
 import zipfile
 from dataclasses import dataclass
@@ -26,6 +27,7 @@ from ...geomcore.errors import GeomcoreError
 from ..fields import LAYERS
 from ..layers import open_layer
 from .ranges import fit_raster
+from .view3d import add_3d_view
 
 __all__ = [
     "INPUT_STYLES",
@@ -46,6 +48,11 @@ _RANK = {
     Qgis.GeometryType.Polygon: 2,
 }
 _RASTER_RANK, _TABLE_RANK = 3, 4
+#: Opening tag of a project file, and what in it tells of user and time.
+_HEAD = re.compile(r"<qgis\b[^>]*>")
+_MAKER = re.compile(r' save(?:User|UserFull|DateTime)="[^"]*"')
+#: QGIS writes the terrain's path in full; it finds the layer by its name inside.
+_TERRAIN_PATH = re.compile(r'(<TerrainProvider\b[^>]*?)layerSource="[^"]*"')
 #: Result layers that are there but not drawn at first: what they hold can be seen on
 #: others, or has no place on a map.
 _HIDDEN = ("picks_time",)
@@ -122,7 +129,15 @@ def result_layers(geopackage, names=None):
 
 
 def make_project(
-    path, groups, crs, title, abstract="", extent=None, terrain="", context=None
+    path,
+    groups,
+    crs,
+    title,
+    abstract="",
+    extent=None,
+    terrain="",
+    look_along=None,
+    context=None,
 ):
     """Write a project file; it appears whole or not at all.
 
@@ -140,6 +155,9 @@ def make_project(
     terrain : str
         Name of the raster layer whose elevations are the terrain of profiles and 3D
         views; none if empty.
+    look_along : float, optional
+        Grid azimuth in degrees, best along strike, of a saved 3D view without the
+        terrain; no such view if not given.
     context : QgsCoordinateTransformContext, optional
 
     Returns
@@ -165,6 +183,8 @@ def make_project(
     _set_extent(project, crs, extent or _extent_of(project, shown[0] if shown else ()))
     if terrain:
         _set_terrain(project, terrain, path)
+    if look_along is not None:
+        _add_view(project, [layer for layers in shown for layer in layers], look_along)
     _write(project, path)
     return path
 
@@ -258,6 +278,23 @@ def _set_extent(project, crs, extent):
     project.viewSettings().setDefaultViewExtent(QgsReferencedRectangle(whole, crs))
 
 
+def _add_view(project, layers, azimuth):
+    """Add a 3D view of all layers that have a 3D symbol."""
+    layers = [layer for layer in layers if layer.renderer3D() is not None]
+    extent = _extent_of(project, layers)
+    if extent.isEmpty():
+        return
+    depths = [z for layer in layers for z in _z_range(layer)]
+    middle = (min(depths) + max(depths)) / 2 if depths else 0.0
+    add_3d_view(project, layers, extent, middle, azimuth)
+
+
+def _z_range(layer):
+    """Give the lowest and the highest elevation of a layer, where it has any."""
+    box = layer.extent3D()
+    return [z for z in (box.zMinimum(), box.zMaximum()) if math.isfinite(z)]
+
+
 def _set_terrain(project, name, path):
     layers = project.mapLayersByName(name)
     if not layers or _rank(layers[0]) != _RASTER_RANK:
@@ -297,7 +334,7 @@ def _without_traces(source, target, stem):
             content, inner = old.read(name), name
             if name.endswith(".qgs"):
                 text = content.decode("utf-8")
-                head, mark, rest = text.partition(">\n")
-                head = re.sub(r' save(?:User|UserFull|DateTime)="[^"]*"', "", head)
-                content, inner = (head + mark + rest).encode("utf-8"), f"{stem}.qgs"
+                text = _TERRAIN_PATH.sub(r'\1layerSource=""', text)
+                text = _HEAD.sub(lambda head: _MAKER.sub("", head.group()), text, 1)
+                content, inner = text.encode("utf-8"), f"{stem}.qgs"
             new.writestr(inner, content)
