@@ -733,7 +733,7 @@ def _help(p):
         f"{tr(m.NAME)}: {tr(m.USE_WHEN)} {tr('Not where')}: {tr(m.NOT_WHEN)}"
         for m in _models()
     )
-    return " ".join([tr(p.help), *each])
+    return "\n".join([tr(p.help), *each])
 
 
 def _crs(p):

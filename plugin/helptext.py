@@ -75,7 +75,8 @@ def _paragraph(text):
 
 
 def _term(term, text):
-    return f"<p><b>{html.escape(term)}</b><br/>{html.escape(text)}</p>"
+    words = html.escape(text).replace("\n", "<br/>")
+    return f"<p><b>{html.escape(term)}</b><br/>{words}</p>"
 
 
 def _list(texts):

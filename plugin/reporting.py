@@ -213,15 +213,21 @@ def doubt_lines(doubts):
     --------
     >>> from collections import namedtuple
     >>> Doubt = namedtuple("Doubt", "code text where")
-    >>> doubt_lines([Doubt("a", "too steep.", "S1"), Doubt("a", "too steep.", "S3")])
-    ['S1, S3: too steep.']
+    >>> one, two = (Doubt("a", "too steep.", f"section {name}") for name in ("A", "B"))
+    >>> doubt_lines([one, two]), doubt_lines([one])
+    (['sections A, B: too steep.'], ['section A: too steep.'])
     """
     places = {}
     for doubt in doubts:
         own = places.setdefault(doubt.text, [])
         if doubt.where and doubt.where not in own:
             own.append(doubt.where)
-    return [
-        f"{', '.join(where)}: {text}" if where else text
-        for text, where in places.items()
-    ]
+    return [f"{_places(where)}{text}" for text, where in places.items()]
+
+
+def _places(where):
+    """Name places before a colon; 'sections' once where all are such."""
+    section = "section "
+    if len(where) > 1 and all(place.startswith(section) for place in where):
+        return f"sections {', '.join(place[len(section) :] for place in where)}: "
+    return f"{', '.join(where)}: " if where else ""

@@ -379,8 +379,8 @@ def write(tables, study, path, place, steps):
 
     Returns
     -------
-    list of str
-        Names of the layers written.
+    dict of str to int
+        Rows written, by layer.
     """
     steps.check()
     written = write_geopackage(
@@ -392,7 +392,7 @@ def write(tables, study, path, place, steps):
         project=place.project,
         feedback=steps.feedback,
     )
-    return list(written.counts)
+    return dict(written.counts)
 
 
 # ---- figures -----------------------------------------------------------------------

@@ -1,5 +1,7 @@
 """What all algorithms have in common: names, help, checks, words, errors, outputs."""
 
+from html import escape
+
 from qgis.core import (
     QgsProcessingAlgorithm,
     QgsProcessingContext,
@@ -73,9 +75,10 @@ class Steps:
             raise StudyError("cancelled", words)
 
     def say(self, lines):
-        """Give lines of text to the log."""
-        for line in lines:
-            self.feedback.pushInfo(line)
+        """Give aligned lines to the log, as they stand in every kind of log."""
+        text = "\n".join(lines)
+        if text:
+            self.feedback.pushFormattedMessage(f"<pre>{escape(text)}</pre>", text)
 
     def warn(self, lines):
         """Give warnings to the log, one each."""
@@ -263,7 +266,7 @@ class Algorithm(QgsProcessingAlgorithm):
                     "replace the whole of it in {}. Give another file for the results."
                 ).format(values.label(key), output)
 
-    def results(self, values, path, layer_names, **numbers):
+    def results(self, values, path, counts, **numbers):
         """Give the results of a run and have its layers loaded where asked for.
 
         Parameters
@@ -271,14 +274,15 @@ class Algorithm(QgsProcessingAlgorithm):
         values : Values
         path : pathlib.Path
             GeoPackage that was written.
-        layer_names : collection of str
-            Layers that were written.
+        counts : mapping of str to int
+            Rows written, by layer; empty layers are not added to the project.
         **numbers
             Further outputs.
         """
-        uris = {n: f"{path}|layername={n}" for n in self.LAYERS if n in layer_names}
+        uris = {n: f"{path}|layername={n}" for n in self.LAYERS if n in counts}
         if values.yes("LOAD"):
-            _load_on_completion(values.context, uris)
+            filled = {name: uri for name, uri in uris.items() if counts[name]}
+            _load_on_completion(values.context, filled, path.stem)
         results = {name.upper(): uri for name, uri in uris.items()}
         return {"OUTPUT": str(path), **results, **numbers}
 
@@ -308,20 +312,33 @@ def _new_style():
     return _KEPT[-1]
 
 
-def _load_on_completion(context, uris):
-    """Ask Processing to add layers to the project, the first one lowest.
+#: From the lowest in the legend to the topmost: tables, lines, points.
+_DRAWING_ORDER = (
+    "runs",
+    "input_statement",
+    "march_table",
+    "section_lines",
+    "predicted_horizons",
+    "predicted_fault_traces",
+    "fault_points",
+    "picks_time",
+    "picks",
+    "cutoffs",
+)
 
-    Section lines lie under picks, picks under faults, as a map is drawn.
-    """
+
+def _load_on_completion(context, uris, group):
+    """Ask Processing to add layers to the project in the order of drawing."""
     from ..fields import LAYERS
 
     project = context.project()
     if project is None:
         return
-    for number, (name, uri) in enumerate(uris.items()):
+    for name, uri in uris.items():
         details = QgsProcessingContext.LayerDetails(LAYERS[name].title, project)
         details.forceName = True
-        details.layerSortKey = number + 1
+        details.groupName = group
+        details.layerSortKey = _DRAWING_ORDER.index(name) + 1
         details.setPostProcessor(_new_style())
         context.addLayerToLoadOnCompletion(uri, details)
 

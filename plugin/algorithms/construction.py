@@ -57,11 +57,11 @@ class ConstructingAlgorithm(Algorithm):
                 path.parent.mkdir(parents=True, exist_ok=True)
             if plots:  # before the layers: a folder that cannot be made stops them
                 plots.mkdir(parents=True, exist_ok=True)
-            names = write(tables, run.study, path, place, steps)
+            counts = write(tables, run.study, path, place, steps)
             if plots:
                 publish(Path(drawn), plots)
         more = {"PLOTS": str(plots)} if plots else {}
-        return self.results(values, path, names, **self._counts(run), **more)
+        return self.results(values, path, counts, **self._counts(run), **more)
 
     def tell(self, run, steps):
         """Say what a run gave: results, sections without one, and doubts."""

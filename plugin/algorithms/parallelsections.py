@@ -60,6 +60,6 @@ class ParallelSections(Algorithm):
         steps.warn(doubt_lines(section_set.doubts))
         steps.next("Writing the section lines")
         path = values.destination("OUTPUT")
-        names = write(section_tables(study, section_set), study, path, place, steps)
+        counts = write(section_tables(study, section_set), study, path, place, steps)
         count = len(section_set.frames)
-        return self.results(values, path, names, SECTION_COUNT=count)
+        return self.results(values, path, counts, SECTION_COUNT=count)

@@ -80,12 +80,12 @@ class PullPicks(Algorithm):
         steps.next("Writing the picks")
         path = values.destination("OUTPUT")
         pulled = pulled.recorded_beside(path.parent, place.base)
-        names = write(picks_tables(pulled), pulled.study, path, place, steps)
+        counts = write(picks_tables(pulled), pulled.study, path, place, steps)
         numbers = {
             "SECTION_COUNT": len(pulled.section_set.frames),
             "USED_PICKS": pulled.used,
         }
-        return self.results(values, path, names, **numbers)
+        return self.results(values, path, counts, **numbers)
 
     def _study(self, values):
         """Give the study that the parameters say, and where it runs."""

@@ -890,7 +890,7 @@ def test_log_tells_results_and_doubts(pulled, tmp_path):
     assert "section  heave  throw" in text
     doubts = [line for line in text.splitlines() if "strips below the cut-off" in line]
     assert len(doubts) == 1
-    assert "section A, section B" in doubts[0]
+    assert "sections A, B: " in doubts[0]
 
 
 def test_plots_are_drawn_for_each_section(pulled, tmp_path):
@@ -1312,12 +1312,18 @@ def test_results_are_loaded_with_their_style(study_file, tmp_path):
     _, done = algorithm.run(parameters, context, feedback, {}, False)
     assert done
     wanted = context.layersToLoadOnCompletion()
-    assert len(wanted) == len(algorithm.LAYERS)
+    assert len(wanted) == len(algorithm.LAYERS) - 2
     from processing.gui.Postprocessing import handleAlgorithmResults
 
     assert handleAlgorithmResults(algorithm, context, feedback, parameters)
     titles = {layer.name(): layer for layer in project.mapLayers().values()}
-    assert set(titles) == {LAYERS[name].title for name in algorithm.LAYERS}
+    # there are no picks in time and no further horizons: no empty layers are added
+    filled = set(algorithm.LAYERS) - {"picks_time", "predicted_horizons"}
+    assert set(titles) == {LAYERS[name].title for name in filled}
+    group = project.layerTreeRoot().findGroup("o")
+    order = [node.layer().name() for node in group.findLayers()]
+    assert order[0] == LAYERS["cutoffs"].title
+    assert order[-1] == LAYERS["runs"].title
     traces = titles[LAYERS["predicted_fault_traces"].title]
     clamping = traces.elevationProperties().clamping()
     assert clamping == Qgis.AltitudeClamping.Absolute
@@ -1501,9 +1507,10 @@ def test_command_line_gives_the_same_fault(
     """Without a desktop the same study gives the same fault."""
     output = tmp_path / "o.gpkg"
     inputs = {"STUDY": str(study_file), "OUTPUT": str(output)}
-    code, results, _, errors = run_qgis_process("heaveline:runstudy", inputs)
+    code, results, output_text, errors = run_qgis_process("heaveline:runstudy", inputs)
     assert code == 0, errors
     assert results["SOLVED"] == 3
+    assert "section  heave  throw" in output_text + errors
     assert largest_error(results["PREDICTED_FAULT_TRACES"], layers.place) < ALLOWED
 
 
