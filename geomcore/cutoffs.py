@@ -427,6 +427,7 @@ def _regional(footwall, far, moved_by, fault, foot, spec, where):
         raise PicksError(error.code, error.reason, where, error.remedy) from None
     if foot is not None:
         variance = (foot.sigma_z**2, 0.0, regional.covariance[2])
+        foot = replace(foot, horizon_slope=regional.slope)
         return replace(regional, covariance=variance), foot
     span = max(np.ptp(fault.x), np.ptp(x), 1.0)
     at = fault.crossing(regional, fault.x[0] - span, fault.x[-1] + 2 * span)
@@ -449,6 +450,7 @@ def _regional(footwall, far, moved_by, fault, foot, spec, where):
         s * abs(slope_f) / across,
         regional.how,
         slides=True,
+        horizon_slope=regional.slope,
     )
     return regional, foot
 

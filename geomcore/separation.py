@@ -30,6 +30,9 @@ class CutOff:
     slides : bool
         Its error slides it along the fault (found cut-offs); otherwise the errors
         of x and z are independent (given ones).
+    horizon_slope : float
+        dz/dx of the horizon there, for found cut-offs: an error of the fault slides
+        them along the horizon.
     """
 
     wall: str
@@ -39,6 +42,7 @@ class CutOff:
     sigma_z: float = 0.0
     how: str = "given"
     slides: bool = False
+    horizon_slope: float = 0.0
 
 
 @dataclass(frozen=True)
@@ -159,6 +163,7 @@ def extend_to_fault(picks, fault, wall, where):
         s * abs(slope) / across,
         f"extended over {max(reach, 0.0):.0f}",
         slides=True,
+        horizon_slope=bed,
     )
     return cut, float(reach)
 

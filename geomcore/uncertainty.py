@@ -71,14 +71,16 @@ def error_columns(problem, solution):
     and shear angle are carried by differences of whole solutions, over one standard
     deviation to either side: over less the noise of single picks, which slides under
     the strips, would pass for an effect of the parameter. The error of the known
-    piece is copied into every strip and does not grow (methods.md section 13). An
-    error along the shear line becomes a vertical one by 1 + tan(dip) tan(a)
-    (section 8).
+    piece is copied along the shear lines into every strip and does not grow
+    (methods.md section 13); at the cut-offs it also slides them along the horizon,
+    and so changes the heave. An error along the shear line becomes a vertical one by
+    1 + tan(dip) tan(a) (section 8).
     """
     x = from_shear_frame(solution.u, solution.z, problem.model.shear_angle)
     frame_factor = 1.0 - _mean_slope(x, solution) * problem.tan
     of_picks = _pick_columns(solution) * frame_factor[:, None]
-    of_known = np.full((len(x), 1), problem.fault.sigma)
+    copied = frame_factor / frame_factor[: solution.start].mean()
+    of_known = (problem.fault.sigma * copied)[:, None]
     of_regional = _regional_columns(problem, solution, x)
     blocks = [("picks", of_picks), ("known fault", of_known), ("regional", of_regional)]
     for name, sigma, source in _single_errors(problem):
@@ -130,12 +132,30 @@ def _single_errors(problem):
     """Errors that stand alone: name of the parameter, its sigma, its source."""
     foot, hang = problem.separation.footwall, problem.separation.hanging_wall
     found = [
-        ("hanging_wall_z", hang.sigma_z, "cut-offs"),
+        ("hanging_wall_z", _of_horizon(problem, hang), "cut-offs"),
+        ("hanging_wall_on_bed", _of_fault(problem, hang), "known fault"),
+        ("footwall_on_regional", _of_fault(problem, foot), "known fault"),
         ("hanging_wall_x", 0.0 if hang.slides else hang.sigma_x, "cut-offs"),
         ("footwall_x", 0.0 if foot.slides else foot.sigma_x, "cut-offs"),
         ("angle", problem.options.shear_angle_sigma, "shear angle"),
     ]
     return [f for f in found if f[1] > 0]
+
+
+def _of_fault(problem, cut):
+    """Sigma of x of a found cut-off from the error of the fault alone."""
+    if not cut.slides:
+        return 0.0
+    across = float(problem.fault.slope_at(cut.x)) - cut.horizon_slope
+    return problem.fault.sigma / max(abs(across), 1e-9)
+
+
+def _of_horizon(problem, cut):
+    """Sigma of z of a cut-off from the error of its horizon alone."""
+    if not cut.slides:
+        return cut.sigma_z
+    sigma_x = np.sqrt(max(cut.sigma_x**2 - _of_fault(problem, cut) ** 2, 0.0))
+    return sigma_x * abs(float(problem.fault.slope_at(cut.x)))
 
 
 def _difference(problem, solution, x, name, step):
@@ -185,7 +205,8 @@ def moved_problem(problem, name, step):
     problem : Problem
     name : str
         ``level`` or ``slope`` of the regional, ``footwall_x``, ``hanging_wall_x``,
-        ``hanging_wall_z``, or ``angle``.
+        ``hanging_wall_z``, ``footwall_on_regional``, ``hanging_wall_on_bed`` (along
+        the horizon, by dx) or ``angle``.
     step : float
     """
     if name == "angle":
@@ -193,7 +214,7 @@ def moved_problem(problem, name, step):
         return replace(problem, model=replace(problem.model, shear_angle=angle))
     if name == "slope":
         return replace(problem, regional=problem.regional.shifted(0.0, step))
-    if name in ("level", "footwall_x"):
+    if name in ("level", "footwall_x", "footwall_on_regional"):
         return _moved_footwall(problem, name, step)
     return _moved_hanging_wall(problem, name, step)
 
@@ -203,6 +224,8 @@ def _moved_footwall(problem, name, step):
     foot, regional = problem.separation.footwall, problem.regional
     if name == "footwall_x":
         dx, dz = step, 0.0
+    elif name == "footwall_on_regional":
+        dx, dz = step, step * regional.slope
     elif foot.slides:
         # a regional raised by step meets the fault at another place
         steep = float(problem.fault.slope_at(foot.x))
@@ -222,6 +245,8 @@ def _moved_hanging_wall(problem, name, step):
     hang = problem.separation.hanging_wall
     if name == "hanging_wall_x":
         dx, dz = step, 0.0
+    elif name == "hanging_wall_on_bed":
+        dx, dz = step, step * hang.horizon_slope
     elif hang.slides:
         dx, dz = step / float(problem.fault.slope_at(hang.x)), step
     else:
