@@ -94,17 +94,23 @@ def leave_out_near_fault(picks, fault, buffer, gridded=()):
 def _leave_out_gap(picks, at, fault):
     """Leave out the picks of one tracked surface that lie in the fault gap.
 
-    Where only the place of the fault is known, the gap tells its walls better than
-    the upright line through that place: they are taken from it.
+    Where only the place of the fault is known, or the gap lies below all that is
+    known of it, the gap tells the walls better than a line through that place or
+    than a straight continuation: they are taken from it.
     """
     inside = np.zeros(len(picks), dtype=bool)
     inside[at] = tracked_gap(picks.x[at], picks.z[at], fault)
-    if inside.any() and is_upright(fault):
+    if inside.any() and (is_upright(fault) or _is_below(picks.z[inside], fault)):
         wall, gap = picks.wall.copy(), picks.x[inside]
         wall[at[picks.x[at] < gap.min()]] = "footwall"
         wall[at[picks.x[at] > gap.max()]] = "hanging wall"
         picks = replace(picks, wall=wall)
     return picks.left_out(inside, "tracked across the fault gap")
+
+
+def _is_below(z, fault):
+    """Tell whether elevations lie below the last known point of the fault."""
+    return bool(np.median(z) < fault.z[-1])
 
 
 def _distance_to_fault(picks, bed, fault):

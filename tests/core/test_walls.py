@@ -195,6 +195,23 @@ def test_walls_of_a_tracked_time_horizon_follow_its_gap_not_the_trace(off):
     assert picks.wall[~inside].tolist() == expected.tolist()
 
 
+def test_gap_below_the_known_fault_tells_the_walls():
+    """A footwall grid value over the straight continuation of a listric fault stays so.
+
+    Only the trace at z = 600 and its dip are known; the fault flattens, so that it
+    meets the horizon 150 farther out than the straight line from the trace.
+    """
+    x = np.arange(0.0, 3000.0, 50.0)
+    foot, hang = 750.0, 1250.0  # straight continuation: x = 600 at the footwall level
+    z = np.interp(x, [foot, hang], [0.0, -500.0]) + 0.1 * np.sin(x)
+    trace = KnownFault(np.array([0.0]), np.array([600.0]), 5.0, -1.0, -1.0, "the dip")
+    picks = assign_walls(table(x, z, source="grid"), trace)
+    assert "hanging wall" in picks.wall[x <= foot]
+    picks = leave_out_near_fault(picks, trace, 0.0, ["grid"])
+    assert set(picks.wall[picks.used & (x <= foot)]) == {"footwall"}
+    assert set(picks.wall[picks.used & (x >= hang)]) == {"hanging wall"}
+
+
 def test_known_fault_outranks_the_gap_for_the_walls():
     """Where the fault is known, its dip tells the walls at every depth."""
     x, z, _ = surface()
