@@ -5,7 +5,7 @@ projects rely on them. Add, never rename.
 """
 
 from dataclasses import dataclass
-from typing import Optional, Tuple
+from typing import Optional
 
 __all__ = ["LAYERS", "FieldSpec", "LayerSpec", "Table"]
 
@@ -48,7 +48,7 @@ class LayerSpec:
 
     name: str
     geometry: Optional[str]
-    fields: Tuple[FieldSpec, ...]
+    fields: tuple
     title: str
     abstract: str
 

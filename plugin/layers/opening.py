@@ -212,9 +212,9 @@ def _from_base(path, base):
 
 
 def _sublayer(path, options, label):
-    if "://" not in path and ":" not in path[2:] and not path.startswith("/vsi"):
-        if not Path(path).exists():
-            _no_layer(f"there is no file '{path}'.", label, "Check the path.")
+    plain = "://" not in path and ":" not in path[2:] and not path.startswith("/vsi")
+    if plain and not Path(path).exists():
+        _no_layer(f"there is no file '{path}'.", label, "Check the path.")
     found = QgsProviderRegistry.instance().querySublayers(path)
     found = [
         s for s in found if s.type() in (Qgis.LayerType.Vector, Qgis.LayerType.Raster)

@@ -1,6 +1,7 @@
 """Vector layers to flat arrays: declared sources, section lines."""
 
 import re
+from dataclasses import dataclass
 from itertools import islice
 
 import numpy as np
@@ -15,12 +16,13 @@ from qgis.core import (
 )
 from qgis.PyQt.QtCore import QMetaType
 
+from ...geomcore.cells import expanded
 from ...geomcore.errors import GeomcoreError, SourceError
 from ...geomcore.section import parse_azimuth
 from ...geomcore.sources import Features
 from ...geomcore.study import SectionLine
 from .opening import is_undefined, open_layer, say
-from .wkb import UnknownGeometry, parse_wkb
+from .wkb import Parts, UnknownGeometry, parse_wkb
 
 __all__ = ["read_section_lines", "read_source", "read_table"]
 
@@ -42,8 +44,8 @@ _NUMERIC = (
     QMetaType.Type.Float,
     QMetaType.Type.Short,
 )
-#: Features held at once: few enough to stay in the processor's cache.
-_BLOCK = 100
+#: Features held at once, and geometries parsed at once.
+_FEATURES, _PARSED = 100, 2000
 
 
 def read_source(
@@ -150,7 +152,7 @@ def _check_geometry(declaration, layer):
 
 
 def _wanted_fields(declaration, layer):
-    """Indices of the declared fields by what they are used for."""
+    """Give the indices of the declared fields by what they are used for."""
     names = {
         "z": declaration.z.field if declaration.z.source == "field" else None,
         "name": declaration.name_field,
@@ -184,8 +186,45 @@ def field_index(fields, name, where):
     return index
 
 
+@dataclass(frozen=True, eq=False)
+class FeatureTable:
+    """Features as read, in the CRS asked for.
+
+    Parameters
+    ----------
+    fid : ndarray (n,) of int
+    parts : Parts
+        Their geometries; ``parts.owner`` is the number of the feature.
+    columns : list of list
+        Attribute values by field, in the order asked for.
+    lost : int
+        Features that could not be reprojected.
+    """
+
+    fid: np.ndarray
+    parts: Parts
+    columns: list
+    lost: int = 0
+
+    def once(self):
+        """Keep each feature once that was read several times, in order of its id."""
+        fid, first = np.unique(self.fid, return_index=True)
+        number = np.full(len(self.fid), -1)
+        number[first] = np.arange(len(first))
+        parts = self.parts.select(number[self.parts.owner] >= 0)
+        owner = number[parts.owner]
+        order = np.argsort(owner, kind="stable")
+        at, _ = expanded(parts.offsets[order], parts.count[order])
+        return FeatureTable(
+            fid,
+            Parts(parts.kind[order], owner[order], parts.count[order], parts.rows[at]),
+            [[c[i] for i in first.tolist()] for c in self.columns],
+            self.lost,
+        )
+
+
 def read_table(layer, indices, crs, transform_context, feedback=None, near=None):
-    """Read geometries as WKB, feature ids and some attributes.
+    """Read geometries, feature ids and some attributes.
 
     Parameters
     ----------
@@ -200,13 +239,7 @@ def read_table(layer, indices, crs, transform_context, feedback=None, near=None)
 
     Returns
     -------
-    wkb : list of bytes
-        Empty where a feature has no geometry.
-    fid : list of int
-    columns : list of list
-        Attribute values by field, in the order of `indices`.
-    lost : int
-        Features that could not be reprojected.
+    FeatureTable
     """
     lost = []
 
@@ -215,12 +248,13 @@ def read_table(layer, indices, crs, transform_context, feedback=None, near=None)
         lost.append(feature.id())
 
     request = _request(layer, indices, crs, transform_context, feedback, count_lost)
-    wkb, fid, columns = [], [], [[] for _ in indices]
-    for part in _iterators(layer, request, near):
-        _collect(part, indices, wkb, fid, columns, feedback)
-    if near is not None and len(near) > 1:
-        wkb, fid, columns = _once(wkb, fid, columns)
-    return wkb, fid, columns, len(set(lost))
+    fid, blocks, columns = [], [], [[] for _ in indices]
+    for features in _iterators(layer, request, near):
+        _collect(features, indices, fid, blocks, columns, feedback)
+    table = FeatureTable(
+        np.array(fid, dtype=np.int64), Parts.joined(blocks), columns, len(set(lost))
+    )
+    return table.once() if near is not None and len(near) > 1 else table
 
 
 def _request(layer, indices, crs, transform_context, feedback, count_lost):
@@ -248,34 +282,32 @@ def _iterators(layer, request, near):
         )
 
 
-def _collect(features, indices, wkb, fid, columns, feedback):
-    """Take what is needed of each feature; the hot loop of reading."""
+def _collect(features, indices, fid, blocks, columns, feedback):
+    """Take what is needed of each feature; the hot loop of reading.
+
+    Features are held few at a time and parsed in larger blocks, so that neither they
+    nor their bytes leave the processor's cache before they are arrays.
+    """
+    wkb = []
     while True:
-        block = list(islice(features, _BLOCK))
+        block = list(islice(features, _FEATURES))
         wkb += [f.geometry().asWkb().data() for f in block]
         fid += [f.id() for f in block]
         for i, column in zip(indices, columns):
             column += [f[i] for f in block]
-        if len(block) < _BLOCK:
+        done = len(block) < _FEATURES
+        if len(wkb) >= _PARSED or done:
+            blocks.append((_parse(wkb), len(wkb)))
+            wkb = []
+            check_cancelled(feedback)
+        if done:
             return
-        check_cancelled(feedback)
 
 
 def check_cancelled(feedback):
     """End the reading where the user has cancelled."""
     if feedback is not None and feedback.isCanceled():
         raise SourceError("cancelled", "the run was cancelled; nothing was written.")
-
-
-def _once(wkb, fid, columns):
-    """Keep each feature once that lies in several boxes, in order of its id."""
-    _, first = np.unique(np.array(fid, dtype=np.int64), return_index=True)
-    first = first.tolist()
-    return (
-        [wkb[i] for i in first],
-        [fid[i] for i in first],
-        [[c[i] for i in first] for c in columns],
-    )
 
 
 def _surface(declaration, crs, base, transform_context, feedback):
@@ -355,28 +387,27 @@ def _azimuths(values):
 
 def _features(declaration, layer, wanted, table, surface, feedback):
     """Make flat arrays of what was read; refuse and count what cannot be used."""
-    wkb, fid, columns, lost = table
-    values = dict(zip(wanted, columns))
-    refused = {"cannot be reprojected": lost} if lost else {}
-    keep = np.fromiter(map(bool, wkb), dtype=bool, count=len(wkb))
-    _count(refused, "no geometry", ~keep)
-    z = None
+    values = dict(zip(wanted, table.columns))
+    refused = {"cannot be reprojected": table.lost} if table.lost else {}
+    parts, z = table.parts, None
+    placed = np.bincount(parts.owner, minlength=len(table.fid)) > 0
+    # those that could not be reprojected come without geometry too
+    empty = int(np.count_nonzero(~placed)) - table.lost
+    if empty > 0:
+        refused["no geometry"] = empty
     if "z" in values:
         z, text = numbers(values["z"])
-        _count(refused, "text in a number field", text & keep)
-        keep &= ~text
-    at = np.flatnonzero(keep)
-    parts = _parse(wkb if len(at) == len(wkb) else [wkb[i] for i in at.tolist()])
-    parts, kind = _of_one_kind(parts, declaration, layer, refused, len(at))
-    owner = at[parts.owner] if len(at) else parts.owner
-    own = _part_columns(declaration, layer, values, owner, feedback)
+        _count(refused, "text in a number field", text & placed)
+        if text.any():
+            parts = parts.select(~text[parts.owner])
+    parts, kind = _of_one_kind(parts, declaration, layer, refused)
     return Features(
         kind,
         parts.xy,
-        _values(declaration, parts, z, owner),
+        _values(declaration, parts, z),
         parts.offsets,
-        np.array(fid, dtype=np.int64)[owner],
-        own,
+        table.fid[parts.owner],
+        _part_columns(declaration, layer, values, parts.owner, feedback),
         surface,
         refused,
     )
@@ -405,18 +436,15 @@ def _straight(wkb):
     return geometry.constGet().segmentize().asWkb().data()
 
 
-def _of_one_kind(parts, declaration, layer, refused, features):
+def _of_one_kind(parts, declaration, layer, refused):
     """Keep the parts of the one kind the layer is about; count the others."""
-    empty = features - len(np.unique(parts.owner))
-    if empty:
-        refused["no geometry"] = refused.get("no geometry", 0) + empty
-    kinds, counts = np.unique(parts.kind, return_counts=True)
-    if not len(kinds):
+    count = np.bincount(parts.kind, minlength=2)
+    if not len(parts.kind):
         return parts, _KINDS[_declared_kind(layer)]
-    kind = int(kinds[np.argmax(counts)])
+    kind = int(np.argmax(count))
     _check_kind(_KINDS[kind], declaration, layer)
-    if len(kinds) > 1:
-        other = parts.kind != kind
+    other = parts.kind != kind
+    if other.any():
         lost = np.setdiff1d(parts.owner[other], parts.owner[~other])
         _count(refused, "geometry of another type", np.ones(len(lost)))
         parts = parts.select(~other)
@@ -428,19 +456,18 @@ def _declared_kind(layer):
     return {Qgis.GeometryType.Line: 2, Qgis.GeometryType.Polygon: 3}.get(kind, 1)
 
 
-def _values(declaration, parts, z, owner):
+def _values(declaration, parts, z):
     """Raw vertical value of each vertex."""
     if declaration.z.source == "geometry":
         return parts.z
-    count = np.diff(parts.offsets)
     if declaration.z.source == "field":
-        return np.repeat(z[owner], count)
+        return np.repeat(z[parts.owner], parts.count)
     value = declaration.z.value if declaration.z.source == "constant" else np.nan
-    return np.full(len(parts.xy), value, dtype=float)
+    return np.full(len(parts.rows), value, dtype=float)
 
 
 def _part_columns(declaration, layer, values, owner, feedback):
-    """Declared attributes of each part."""
+    """Give the declared attributes of each part."""
     own = {}
     if "name" in values:
         name = texts(values["name"])
@@ -493,28 +520,31 @@ def read_section_lines(layer, id_field, crs, transform_context, feedback=None):
             "Use a line layer.",
         )
     indices = [field_index(layer.fields(), id_field, where)] if id_field else []
-    wkb, fid, columns, lost = read_table(
-        layer, indices, crs, transform_context, feedback
-    )
-    if lost:
-        say(feedback, f"{where}: {lost} lines cannot be reprojected and are left out.")
-    names = texts(columns[0]) if indices else [str(i) for i in fid]
-    return [_section_line(n, i, w, id_field) for n, i, w in zip(names, fid, wkb)]
+    table = read_table(layer, indices, crs, transform_context, feedback)
+    if table.lost:
+        say(
+            feedback,
+            f"{where}: {table.lost} lines cannot be reprojected and are left out.",
+        )
+    names = texts(table.columns[0]) if indices else [str(i) for i in table.fid]
+    return [_section_line(i, names[i], table, id_field) for i in range(len(names))]
 
 
 def _type_name(layer):
     return QgsWkbTypes.displayString(layer.wkbType())
 
 
-def _section_line(name, fid, wkb, id_field):
-    problem = ""
-    parts = _parse([wkb]) if wkb else None
-    n = 0 if parts is None else len(parts.offsets) - 1
+def _section_line(i, name, table, id_field):
+    own = np.flatnonzero(table.parts.owner == i)
+    problem, vertices = "", np.empty((0, 2))
+    name = str(name).strip()
     if not name:
-        name, problem = f"feature {fid}", f"the field '{id_field}' is empty."
-    if n == 0:
+        name, problem = f"feature {table.fid[i]}", f"the field '{id_field}' is empty."
+    if len(own) == 0:
         problem = "the feature has no geometry."
-    elif n > 1:
-        problem = f"the line has {n} parts."
-    vertices = parts.xy[parts.offsets[0] : parts.offsets[1]] if n else np.empty((0, 2))
-    return SectionLine(str(name), vertices, problem)
+    elif len(own) > 1:
+        problem = f"the line has {len(own)} parts."
+    if len(own):
+        first = table.parts.offsets[own[0]]
+        vertices = table.parts.xy[first : first + table.parts.count[own[0]]]
+    return SectionLine(name, vertices, problem)

@@ -8,7 +8,6 @@ from ...geomcore.picks import Picks
 from ...geomcore.profile import line_through
 from ...geomcore.study import GivenTrace, SectionPicks
 from .reading import field_index, layer_name, numbers, read_table, texts
-from .wkb import parse_wkb
 
 __all__ = ["read_picks", "read_traces"]
 
@@ -59,8 +58,8 @@ def read_picks(layer, time_layer, crs, transform_context, feedback=None):
 
 def _read_columns(layer, names, crs, transform_context, feedback, where):
     indices = [field_index(layer.fields(), n, where) for n in names]
-    wkb, fid, columns, _ = read_table(layer, indices, crs, transform_context, feedback)
-    return wkb, fid, dict(zip(names, columns))
+    table = read_table(layer, indices, crs, transform_context, feedback)
+    return table, dict(zip(names, table.columns))
 
 
 def _picks_of(layer, domain, crs, transform_context, feedback):
@@ -68,15 +67,15 @@ def _picks_of(layer, domain, crs, transform_context, feedback):
     sigma = "sigma_twt" if domain == "time" else "sigma_z"
     names = [*_PICK_NUMBERS, *_PICK_TEXTS, "used", "source_fid", sigma, *_PICK_ERRORS]
     names += ["twt_ms"] if domain == "time" else []
-    wkb, fid, raw = _read_columns(layer, names, crs, transform_context, feedback, where)
-    columns = _pick_columns(raw, fid, where)
-    columns["sigma_z"] = _number(raw, sigma, fid, where, missing=0.0)
+    table, raw = _read_columns(layer, names, crs, transform_context, feedback, where)
+    columns = _pick_columns(raw, table.fid, where)
+    columns["sigma_z"] = _number(raw, sigma, table.fid, where, missing=0.0)
     for name in _PICK_ERRORS:
-        columns[name] = _number(raw, name, fid, where, missing=0.0)
+        columns[name] = _number(raw, name, table.fid, where, missing=0.0)
     if domain == "time":
-        columns["z"] = -_number(raw, "twt_ms", fid, where)
+        columns["z"] = -_number(raw, "twt_ms", table.fid, where)
     else:
-        columns["z"] = _elevations(layer, wkb, where)
+        columns["z"] = _elevations(layer, table, where)
     columns["used"] &= np.isfinite(columns["z"])
     section = columns.pop("section_id")
     return {
@@ -120,7 +119,7 @@ def _number(raw, name, fid, where, missing=np.nan):
     return np.where(np.isfinite(number), number, missing)
 
 
-def _elevations(layer, wkb, where):
+def _elevations(layer, table, where):
     """Z of each pick, NaN for one without geometry."""
     if not QgsWkbTypes.hasZ(layer.wkbType()):
         raise SourceError(
@@ -129,10 +128,8 @@ def _elevations(layer, wkb, where):
             where,
             "Use the layer 'picks' that 'Pull picks' writes.",
         )
-    z = np.full(len(wkb), np.nan)
-    here = np.array([i for i, w in enumerate(wkb) if w], dtype=np.int64)
-    parts = parse_wkb([wkb[i] for i in here])
-    z[here[parts.owner]] = parts.z
+    z = np.full(len(table.fid), np.nan)
+    z[table.parts.owner] = table.parts.z
     return z
 
 
@@ -165,17 +162,17 @@ def read_traces(layer, frames, crs, transform_context, feedback=None):
         )
     words = ("section_id", "horizon", "band")
     values = ("heave", "throw", "shear_angle", "regional_z", "regional_dip")
-    wkb, fid, raw = _read_columns(
+    table, raw = _read_columns(
         layer, [*words, *values], crs, transform_context, feedback, where
     )
     text = {name: texts(raw[name]) for name in words}
-    number = {name: _number(raw, name, fid, where) for name in values}
+    number = {name: _number(raw, name, table.fid, where) for name in values}
     by_id = {frame.section_id: frame for frame in frames}
     found = {}
     for i, section_id in enumerate(text["section_id"]):
         if section_id not in by_id or text["band"][i] not in ("best", ""):
             continue
-        _check_trace(i, fid, wkb, number, where)
+        _check_trace(i, table, number, where)
         if section_id in found:
             raise SourceError(
                 "several-traces",
@@ -185,26 +182,29 @@ def read_traces(layer, frames, crs, transform_context, feedback=None):
             )
         row = {name: float(column[i]) for name, column in number.items()}
         found[section_id] = _trace(
-            by_id[section_id], wkb[i], row, str(text["horizon"][i]), where
+            by_id[section_id],
+            table.parts.select(table.parts.owner == i),
+            row,
+            str(text["horizon"][i]),
+            where,
         )
     return found
 
 
-def _check_trace(i, fid, wkb, number, where):
+def _check_trace(i, table, number, where):
     missing = [name for name, column in number.items() if not np.isfinite(column[i])]
-    if missing or not wkb[i]:
+    if missing or i not in table.parts.owner:
         raise SourceError(
             "bad-trace",
-            f"feature {fid[i]} has no {', '.join(missing) or 'geometry'}.",
+            f"feature {table.fid[i]} has no {', '.join(missing) or 'geometry'}.",
             where,
             "Use the layer that 'Predict fault' writes.",
         )
 
 
-def _trace(frame, wkb, row, horizon, where):
-    parts = parse_wkb([wkb])
+def _trace(frame, parts, row, horizon, where):
     x, z = frame.project(parts.xy)[0], parts.z
-    if len(parts.offsets) != 2 or not np.isfinite(z).all() or np.any(np.diff(x) <= 0):
+    if len(parts.count) != 1 or not np.isfinite(z).all() or np.any(np.diff(x) <= 0):
         raise SourceError(
             "bad-trace",
             f"the trace of section {frame.section_id} is not one line with Z that "

@@ -56,30 +56,67 @@ class Parts:
         1 point, 2 line, 3 ring of a polygon.
     owner : ndarray (k,) of int
         Geometry each part belongs to.
-    offsets : ndarray (k + 1,)
-        Part i holds the vertices ``offsets[i]:offsets[i + 1]``.
-    xy : ndarray (n, 2)
-    z : ndarray (n,)
-        NaN where a geometry has no Z.
+    count : ndarray (k,) of int
+        Vertices of each part.
+    rows : ndarray (n, 2) or (n, 3)
+        Coordinates of all parts, one after the other; Z is NaN where some geometries
+        have it and this one does not.
     """
 
     kind: np.ndarray
     owner: np.ndarray
-    offsets: np.ndarray
-    xy: np.ndarray
-    z: np.ndarray
+    count: np.ndarray
+    rows: np.ndarray
+
+    @property
+    def xy(self):
+        """Map coordinates (n, 2)."""
+        return self.rows[:, :2]
+
+    @property
+    def z(self):
+        """Z coordinates (n,), NaN where there are none."""
+        has = self.rows.shape[1] > 2
+        return self.rows[:, 2] if has else np.full(len(self.rows), np.nan)
+
+    @property
+    def offsets(self):
+        """Part i holds the vertices ``offsets[i]:offsets[i + 1]``, (k + 1,)."""
+        return np.concatenate([[0], np.cumsum(self.count)]).astype(np.int64)
 
     def select(self, keep):
         """Give the parts under a mask (k,)."""
-        vertex = np.repeat(keep, np.diff(self.offsets))
-        count = np.diff(self.offsets)[keep]
-        return Parts(
-            self.kind[keep],
-            self.owner[keep],
-            np.concatenate([[0], np.cumsum(count)]).astype(np.int64),
-            self.xy[vertex],
-            self.z[vertex],
+        rows = self.rows[np.repeat(keep, self.count)]
+        return Parts(self.kind[keep], self.owner[keep], self.count[keep], rows)
+
+    @classmethod
+    def joined(cls, blocks):
+        """Join blocks of geometries.
+
+        Parameters
+        ----------
+        blocks : list of tuple (Parts, int)
+            Each with the number of geometries it was parsed from.
+        """
+        if not blocks:
+            none = np.empty(0, dtype=np.int64)
+            return cls(none, none, none, np.empty((0, 2)))
+        parts = [p for p, _ in blocks]
+        width = max(p.rows.shape[1] for p in parts)
+        before = np.cumsum([0] + [n for _, n in blocks])
+        return cls(
+            np.concatenate([p.kind for p in parts]),
+            np.concatenate([p.owner + n for p, n in zip(parts, before)]),
+            np.concatenate([p.count for p in parts]),
+            np.concatenate([_widened(p.rows, width) for p in parts]),
         )
+
+
+def _widened(rows, width):
+    """Coordinates with a Z of NaN where they have none and others do."""
+    if rows.shape[1] == width:
+        return rows
+    return np.column_stack([rows, np.full(len(rows), np.nan)])
 
 
 def parse_wkb(geometries):
@@ -102,8 +139,9 @@ def parse_wkb(geometries):
     sizes = np.fromiter(map(len, geometries), dtype=np.int64, count=len(geometries))
     data = b"".join(geometries)
     at = np.concatenate([[0], np.cumsum(sizes)])[:-1]
+    owner = np.flatnonzero(sizes)
     found = _Found([], [], [], [], [], [])
-    _walk(np.frombuffer(data, dtype=np.uint8), at, np.arange(len(at)), found)
+    _walk(np.frombuffer(data, dtype=np.uint8), at[owner], owner, found)
     if found.unknown:
         raise UnknownGeometry(np.unique(np.concatenate(found.unknown)))
     kind, owner, start, count, width = found.in_order()
@@ -113,12 +151,11 @@ def parse_wkb(geometries):
 def _all_single(geometries):
     """Parse the common case of points only or lines only, all of one type.
 
-    The coordinates are copied once, into an array of which xy and z are views.
     None where the geometries are of another kind or of several.
     """
     head = geometries[0][:5] if geometries else b""
     kind, width = _SINGLE.get(head, (0, 0))
-    if not kind or not all([g.startswith(head) for g in geometries]):
+    if not kind or sum([g.startswith(head) for g in geometries]) < len(geometries):
         return None
     n = len(geometries)
     if kind == _POINT:
@@ -130,10 +167,7 @@ def _all_single(geometries):
         sizes = np.fromiter(map(len, geometries), dtype=np.int64, count=n)
         count = (sizes - 9) // (8 * width)
     rows = body.view(_NATIVE + "f8").reshape(-1, width)
-    z = rows[:, 2] if width == 3 else np.full(len(rows), np.nan)
-    offsets = np.concatenate([[0], np.cumsum(count)])
-    parts = Parts(np.full(n, kind), np.arange(n), offsets, rows[:, :2], z)
-    return _with_coordinates(parts)
+    return _with_coordinates(Parts(np.full(n, kind), np.arange(n), count, rows))
 
 
 @dataclass(frozen=True, eq=False)
@@ -203,7 +237,7 @@ def _visitor(kind):
     }.get(int(kind))
 
 
-def _points(data, at, owner, width, found):
+def _points(_, at, owner, width, found):
     found.add(_POINT, owner, at, np.ones(len(at), dtype=np.int64), width)
     return at + 8 * np.abs(width)
 
@@ -222,7 +256,7 @@ def _rings(data, at, owner, width, found):
     )
 
 
-def _members(data, at, owner, width, found):
+def _members(data, at, owner, _, found):
     return _each(data, at, lambda here, own: _walk(data, here, owner[own], found))
 
 
@@ -238,19 +272,15 @@ def _each(data, at, visit):
 
 def _gather(data, kind, owner, start, count, width):
     """Copy the coordinates of the parts out of the bytes."""
-    n = int(count.sum())
-    xy, z = np.empty((n, 2)), np.full(n, np.nan)
-    offsets = np.concatenate([[0], np.cumsum(count)]).astype(np.int64)
+    has_z = np.isin(width, (3, 4))
+    out = np.full((int(count.sum()), 3 if has_z.any() else 2), np.nan)
     for w in np.unique(width):
         mine = width == w
         rows = _doubles(data, start[mine], 8 * abs(w) * count[mine])
-        rows = rows.reshape(-1, abs(w))
+        take = 3 if w in (3, 4) else 2
         at = slice(None) if mine.all() else np.repeat(mine, count)
-        xy[at] = rows[:, :2]
-        if w in (3, 4):
-            z[at] = rows[:, 2]
-    parts = Parts(kind, owner, offsets, xy, z)
-    return _with_coordinates(parts)
+        out[at, :take] = rows.reshape(-1, abs(w))[:, :take]
+    return _with_coordinates(Parts(kind, owner, count, out))
 
 
 def _doubles(data, start, size):
@@ -261,8 +291,7 @@ def _doubles(data, start, size):
 
 def _with_coordinates(parts):
     """Leave out empty parts; an empty point is written as NaN."""
-    count = np.diff(parts.offsets)
-    keep = count > 0
+    keep = parts.count > 0
     point = np.flatnonzero((parts.kind == _POINT) & keep)
     keep[point] = np.isfinite(parts.xy[parts.offsets[point]]).all(axis=1)
     return parts if keep.all() else parts.select(keep)

@@ -7,7 +7,6 @@ import time
 from contextlib import closing, suppress
 from dataclasses import dataclass, field
 from pathlib import Path
-from typing import Tuple
 from uuid import uuid4
 
 import numpy as np
@@ -66,7 +65,7 @@ class Written:
 
     path: Path
     counts: dict
-    left_out: Tuple[str, ...] = field(default=())
+    left_out: tuple = field(default=())
 
 
 def write_geopackage(
@@ -207,7 +206,7 @@ def reload_layers(path, project=None):
 
 
 def _state(path):
-    """What tells that a file has changed; None where there is none."""
+    """Give what tells that a file has changed; None where there is none."""
     if not path.exists():
         return None
     stat = path.stat()
@@ -250,7 +249,7 @@ def _backup(source, target, path):
     """Copy a database into another, all or nothing, waiting for locks so long."""
     end = time.monotonic() + PATIENCE
 
-    def look(status, remaining, total):
+    def look(_status, remaining, _total):
         if time.monotonic() > end and remaining:
             _refuse(
                 "output-in-use",
@@ -341,7 +340,7 @@ _PLAIN = {"text": str, "integer": int, "real": float, "boolean": bool}
 
 
 def _value(value, kind):
-    """A value as QGIS takes it; None for unknown."""
+    """Give a value as QGIS takes it; None for unknown."""
     if value is None or value != value:
         return None
     return kind(value)
@@ -401,14 +400,16 @@ def _swap(temporary, path):
     with temporary.open("rb+") as stream:
         os.fsync(stream.fileno())
     try:
-        os.replace(temporary, path)
+        temporary.replace(path)
     except PermissionError:
         if not path.exists():
             raise
         # Windows does not replace a file that is open: its content is, instead
-        with closing(sqlite3.connect(temporary)) as source:
-            with closing(sqlite3.connect(path, timeout=PATIENCE)) as target:
-                _backup(source, target, path)
+        with (
+            closing(sqlite3.connect(temporary)) as source,
+            closing(sqlite3.connect(path, timeout=PATIENCE)) as target,
+        ):
+            _backup(source, target, path)
 
 
 def _cannot_write(path, error):

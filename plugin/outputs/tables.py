@@ -120,13 +120,13 @@ def _warnings(doubts):
 
 
 def _known(value):
-    """A plain float, or None where it is unknown."""
+    """Give a plain float, or None where it is unknown."""
     value = float(value)
     return value if np.isfinite(value) else None
 
 
 def _column(values):
-    """A column as plain Python values, None where a number is unknown."""
+    """Give a column as plain Python values, None where a number is unknown."""
     return [None if v is None or v != v else v for v in np.asarray(values).tolist()]
 
 
