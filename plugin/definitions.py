@@ -10,10 +10,8 @@ from typing import Any, Optional
 
 from qgis.core import (
     Qgis,
-    QgsProcessing,
     QgsProcessingParameterBoolean,
     QgsProcessingParameterCrs,
-    QgsProcessingParameterDefinition,
     QgsProcessingParameterEnum,
     QgsProcessingParameterExtent,
     QgsProcessingParameterFeatureSource,
@@ -639,10 +637,10 @@ def declared(name, **changes):
 
 # ---- Processing definitions --------------------------------------------------------
 
-_LINE = QgsProcessing.SourceType.TypeVectorLine
-_POINT = QgsProcessing.SourceType.TypeVectorPoint
-_ANY = QgsProcessing.SourceType.TypeVectorAnyGeometry
-_RASTER = QgsProcessing.SourceType.TypeRaster
+_LINE = Qgis.ProcessingSourceType.VectorLine
+_POINT = Qgis.ProcessingSourceType.VectorPoint
+_ANY = Qgis.ProcessingSourceType.VectorAnyGeometry
+_RASTER = Qgis.ProcessingSourceType.Raster
 
 
 def _source(types):
@@ -822,6 +820,6 @@ def make(parameter):
     definition = FACTORIES[parameter.kind](parameter)
     definition.setHelp(_help(parameter))
     if parameter.advanced:
-        advanced = QgsProcessingParameterDefinition.Flag.FlagAdvanced
+        advanced = Qgis.ProcessingParameterFlag.Advanced
         definition.setFlags(definition.flags() | advanced)
     return definition

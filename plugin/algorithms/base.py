@@ -3,6 +3,7 @@
 from html import escape
 
 from qgis.core import (
+    Qgis,
     QgsProcessingAlgorithm,
     QgsProcessingContext,
     QgsProcessingException,
@@ -10,7 +11,6 @@ from qgis.core import (
     QgsProcessingMultiStepFeedback,
     QgsProcessingOutputNumber,
     QgsProcessingOutputVectorLayer,
-    QgsProcessingParameterDefinition,
     QgsProcessingParameterEnum,
     QgsProcessingParameterNumber,
 )
@@ -350,7 +350,7 @@ def _unusable(definition, parameters, context):
     if definition.checkValueIsAcceptable(value, context):
         return ""
     label = f"{definition.description()} ({key})"
-    optional = definition.flags() & QgsProcessingParameterDefinition.Flag.FlagOptional
+    optional = definition.flags() & Qgis.ProcessingParameterFlag.Optional
     if value in (None, "") and not optional:
         return tr("{} is not given.").format(label)
     return tr("{}: '{}' cannot be used.{}").format(label, value, _takes(definition))
