@@ -51,7 +51,9 @@ def march(origin_index, origin_fraction, start, increment, step=None):
     fault[:done] = start
     needed = origin_index + (origin_fraction > 0)
     while done < n:
-        stop = done + int(np.argmax(np.r_[needed[done:] >= done, True]))
+        waits = needed[done:] >= done
+        first = int(waits.argmax())
+        stop = done + first if waits[first] else n
         if stop == done:
             raise ConstructionError(
                 "no-progress", "a column has not moved: its origin lies beyond itself."
