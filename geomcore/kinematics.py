@@ -19,6 +19,7 @@ __all__ = [
     "ConstantSlip",
     "from_shear_frame",
     "model_named",
+    "smoothed_line",
     "to_shear_frame",
 ]
 
@@ -227,7 +228,7 @@ class ConstantBedLength(_UprightModel):
 
     def origin(self, u, bed, problem):
         """Give x on the regional as long from the footwall cut-off as B to X."""
-        x, z = _smoothed(bed, self.NOISE)
+        x, z = smoothed_line(bed, self.NOISE)
         length = np.r_[0.0, np.cumsum(np.hypot(np.diff(x), np.diff(z)))]
         foot = problem.separation.footwall.x
         stretch = np.hypot(1.0, problem.regional.slope)
@@ -270,8 +271,20 @@ class ConstantBedLength(_UprightModel):
         return result
 
 
-def _smoothed(bed, tolerance):
-    """Average the bed over bins wide enough that noise lengthens it no more."""
+def smoothed_line(bed, tolerance):
+    """Average a bed over bins wide enough that noise lengthens it no more.
+
+    Parameters
+    ----------
+    bed : Profile
+    tolerance : float
+        Lengthening that is let through, relative.
+
+    Returns
+    -------
+    x, z : ndarray (n,)
+        First and last point kept.
+    """
     n, sigma = len(bed.x), float(np.median(bed.sigma))
     if n < 3 or sigma == 0:
         return bed.x, bed.z
