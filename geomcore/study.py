@@ -23,8 +23,8 @@ from .cutoffs import (
 from .digest import digest
 from .errors import Doubt, FrameError, GeomcoreError, StudyError, Unsolved
 from .fault import known_fault
-from .forward import predict_horizon
-from .kinematics import model_named
+from .forward import forward_horizon
+from .kinematics import ConstantBedLength, ConstantHeave, model_named
 from .picks import Picks, PullOptions, SourceCount, prepare_source, pull_source
 from .problem import OtherHorizon
 from .profile import (
@@ -128,6 +128,8 @@ class GivenTrace:
     oblique_heave, shear_angle : float
     compaction : Compaction or None
         That of the construction; further horizons compact with it.
+    model : object, optional
+        Kinematic model that made it; constant heave if not given.
     """
 
     x: np.ndarray
@@ -137,6 +139,7 @@ class GivenTrace:
     oblique_heave: float
     shear_angle: float
     compaction: object = None
+    model: object = None
 
     @classmethod
     def of(cls, prediction):
@@ -149,6 +152,7 @@ class GivenTrace:
             prediction.oblique_heave,
             prediction.model.shear_angle,
             prediction.compaction,
+            prediction.model,
         )
 
 
@@ -766,12 +770,21 @@ def horizon_from_trace(spec, picks, given):
         If its regional is not known or does not meet the fault.
     """
     regional = _regional_of(spec, picks, given)
-    profile, foot, hang = predict_horizon(
+    model = given.model or ConstantHeave(given.shear_angle)
+    if isinstance(model, ConstantBedLength) and spec.name != given.horizon:
+        raise StudyError(
+            "further-horizon-model",
+            f"{model.label} gives each horizon a displacement of its own, so further "
+            "horizons do not follow from the fault.",
+            f"horizon {spec.name}",
+            "Use constant heave or constant slip.",
+        )
+    profile, foot, hang = forward_horizon(
         given.x,
         given.z,
         regional,
         given.oblique_heave,
-        given.shear_angle,
+        model,
         compaction=given.compaction,
     )
     bed = profile_from_picks(picks.of("horizon", spec.name, "hanging wall"))

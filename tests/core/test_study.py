@@ -652,3 +652,55 @@ def test_unsolved_section_is_falsy_and_a_doubt_says_where():
     good = only(ran())
     assert all(d.where == "section S1" for d in good.all_doubts)
     assert str(good.all_doubts[0]).startswith("section S1: ")
+
+
+def _further(model, displacement):
+    """Predict horizon B by a model's own fault; the truth is the forward model."""
+    from geomcore.forward import forward_horizon
+    from geomcore.picks import Picks
+    from geomcore.profile import line_through
+    from geomcore.recipe import HorizonSpec
+    from geomcore.study import GivenTrace, horizon_from_trace
+
+    x = np.linspace(0.0, 20000.0, 4001)
+    z = -4000.0 + 4000.0 * np.exp(-x * np.tan(np.radians(60.0)) / 4000.0)
+    base = line_through(0.0, -500.0, 0.0)
+    given = GivenTrace(x, z, "A", base, displacement, 0.0, model=model)
+    found = horizon_from_trace(HorizonSpec("B", -300.0), Picks.empty("S1"), given)
+    truth, *_ = forward_horizon(
+        x, z, line_through(0.0, -800.0, 0.0), displacement, model
+    )
+    return found, truth
+
+
+def test_further_horizon_follows_the_model_that_made_the_fault():
+    """A fault by constant slip moves its other horizons by constant slip too."""
+    from geomcore.kinematics import ConstantHeave, ConstantSlip
+
+    found, truth = _further(ConstantSlip(), 1000.0)
+    at = np.linspace(3000.0, 12000.0, 20)
+    np.testing.assert_allclose(found.profile(at), truth(at), atol=1e-6)
+    other, _ = _further(ConstantHeave(0.0), 1000.0)
+    assert np.abs(found.profile(at) - other.profile(at)).max() > 20.0
+
+
+def test_further_horizon_by_bed_length_is_refused():
+    """Bed length gives every horizon a displacement of its own."""
+    from geomcore.errors import StudyError
+    from geomcore.kinematics import ConstantBedLength
+
+    with pytest.raises(StudyError) as error:
+        _further(ConstantBedLength(), 600.0)
+    assert error.value.code == "further-horizon-model"
+
+
+def test_horizon_that_cannot_join_the_fit_is_left_out_with_a_doubt():
+    """A horizon without cut-offs is named; the fit goes on with the others."""
+    fitted = study_for(WORLD, sigma=2.0, solver="fit", fit_horizons=["B"])
+    doubts = only(ran(study=fitted)).prediction.doubts
+    said = {d.code: d for d in doubts}["horizon-not-fitted"]
+    assert "'B'" in said.text
+    assert said.where == "section S1"
+    alone = study_for(WORLD, sigma=2.0, solver="fit")
+    codes = [d.code for d in only(ran(study=alone)).prediction.doubts]
+    assert "horizon-not-fitted" not in codes
