@@ -12,23 +12,21 @@ from geomcore.problem import MarchOptions, Problem, bed_from, solve_march
 
 TARGET = 1 / 10
 SAMPLES = 1000
-PER_STRIP = 80
 
 
 def problem_of(angle):
     """One section of about a thousand samples, noise-free picks."""
     world = World(EXPONENTIAL, angle, heave=900.0, reach=11_600.0)
     inputs = direct_inputs(world)
-    bed = bed_from(inputs["separation"].hanging_wall, inputs["bed"])
-    strips = bed.x[-1] - bed.z[-1] * math.tan(math.radians(angle))
-    foot = inputs["separation"].footwall
-    strips = strips - foot.x + foot.z * math.tan(math.radians(angle))
-    per_strip = round(SAMPLES / (strips / world.oblique_heave))
+    foot, bed = inputs["separation"].footwall, inputs["bed"]
+    t = math.tan(math.radians(angle))
+    length = (bed.x[-1] - bed.z[-1] * t) - (foot.x - foot.z * t)
+    per_strip = round(SAMPLES * world.oblique_heave / length)
     return inputs, Problem(
         "section S1",
         inputs["separation"],
         inputs["fault"],
-        bed,
+        bed_from(inputs["separation"].hanging_wall, bed),
         inputs["regional"],
         inputs["model"],
         MarchOptions(per_strip),

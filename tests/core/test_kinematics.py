@@ -7,18 +7,21 @@ import oracles
 import pytest
 from hypothesis import given
 from hypothesis import strategies as st
-from worlds import EXPONENTIAL
+from worlds import EXPONENTIAL, World, direct_inputs
 
+from geomcore.construction import predict_fault
 from geomcore.errors import ConstructionError
 from geomcore.forward import forward_horizon
 from geomcore.kinematics import (
     MODELS,
+    ConstantBedLength,
     ConstantHeave,
+    ConstantSlip,
     from_shear_frame,
     model_named,
     to_shear_frame,
 )
-from geomcore.profile import line_through
+from geomcore.profile import Profile, line_through
 
 #: Gentle enough for a bed to keep its length over it.
 GENTLE = oracles.circular_fault(dip=40.0, radius=10000.0)
@@ -163,3 +166,29 @@ def test_forward_bed_is_where_its_particles_went(angle, slope):
         oracles.rolled_bed(EXPONENTIAL, regional, angle, 900.0, 90.0, 12000.0)
     )
     assert bed(particles[1:, 0]) == pytest.approx(particles[1:, 1], abs=0.05)
+
+
+def test_bed_cannot_keep_its_length_over_a_fault_that_flattens_too_fast():
+    """Where the equation has no solution the model is refused with the place."""
+    steep = oracles.circular_fault(dip=60.0, radius=7000.0)
+    x = np.arange(-500.0, 14000.0, 20.0)
+    z = np.array([steep.z(v) for v in x])
+    with pytest.raises(ConstructionError, match="flattens too fast") as caught:
+        forward_horizon(
+            x, z, line_through(0.0, -400.0, 0.0), 700.0, ConstantBedLength()
+        )
+    assert caught.value.code == "bed-too-long"
+    assert "near x =" in str(caught.value)
+
+
+def test_bed_farther_from_its_regional_than_the_slip_is_refused():
+    """A straight slip of D cannot lower a bed by more than D."""
+    world = World(EXPONENTIAL, heave=600.0)
+    inputs = direct_inputs(world)
+    bed, slip = inputs["bed"], ConstantSlip().displacement(600.0, 800.0)
+    deep = np.where(bed.x > 3000.0, -500.0 - 1.1 * slip, bed.z)
+    inputs.update(model=ConstantSlip(), bed=Profile(bed.x, deep, bed.sigma))
+    with pytest.raises(ConstructionError, match="slip of") as caught:
+        predict_fault(**inputs)
+    assert caught.value.code == "slip-too-small"
+    assert "section S1" in str(caught.value)
