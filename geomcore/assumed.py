@@ -45,7 +45,15 @@ def _line_near(profile, first):
     return float(level), float(slope)
 
 
-def carry_on(fault, picks, horizon, model, dip_change=0.0, curvature_share=1.0):
+def carry_on(
+    fault,
+    picks,
+    horizon,
+    model,
+    dip_change=0.0,
+    curvature_share=1.0,
+    compaction=None,
+):
     """Carry the known fault on by an arc whose turn the bed prescribes.
 
     Parameters
@@ -60,6 +68,8 @@ def carry_on(fault, picks, horizon, model, dip_change=0.0, curvature_share=1.0):
         Added to the dip at the last known point, degrees.
     curvature_share : float
         Share of the arc's curvature that is kept; 0 is the straight line.
+    compaction : Compaction, optional
+        Of the construction.
 
     Returns
     -------
@@ -74,7 +84,10 @@ def carry_on(fault, picks, horizon, model, dip_change=0.0, curvature_share=1.0):
     by as much as the bed dips towards it against the regional. An arc of constant
     curvature in the shear frame that turns by that much is the simplest fault that
     agrees with the bed; a straight line agrees only with a bed parallel to the
-    regional. The arc is ours; the relation is eq. 3 of methods.md.
+    regional. With compaction the solid thickness is differentiated instead:
+    F~'(u_h) - B~'(u_h) = g (F~'(u_f) - R~'), g the solid share of the rock at the
+    footwall cut-off then over that at the hanging-wall cut-off now. The arc is ours;
+    the relation is eq. 3 of methods.md.
     """
     bed = profile_from_picks(picks.of("horizon", horizon, "hanging wall"))
     foot = profile_from_picks(picks.of("horizon", horizon, "footwall"))
@@ -82,9 +95,8 @@ def carry_on(fault, picks, horizon, model, dip_change=0.0, curvature_share=1.0):
         return fault
     tan = float(np.tan(np.radians(model.shear_angle)))
     dip = np.degrees(np.arctan(-fault.slope_below)) + dip_change
-    arc = _Arc(
-        fault, np.clip(dip, 1.0, 89.0), tan, _line_near(bed, True), _footwall(foot)
-    )
+    lines = _line_near(bed, True), _footwall(foot)
+    arc = _Arc(fault, np.clip(dip, 1.0, 89.0), tan, *lines, compaction)
     curvature = arc.curvature()
     if curvature is None:
         return fault if dip_change == 0 else _straight(fault, dip)
@@ -149,8 +161,8 @@ def _footwall(foot):
 class _Arc:
     """F~(u) = z0 + f (u - u0) + c/2 (u - u0)^2 beyond the last known point."""
 
-    def __init__(self, fault, dip, tan, bed, regional):
-        self.tan = tan
+    def __init__(self, fault, dip, tan, bed, regional, compaction=None):
+        self.tan, self.compaction = tan, compaction
         self.x0, self.z0 = float(fault.x[-1]), float(fault.z[-1])
         self.u0 = self.x0 - self.z0 * tan
         slope = -np.tan(np.radians(dip))
@@ -196,15 +208,23 @@ class _Arc:
         hang = self._meets(self.bed, c)
         if hang is None:
             return None
-        turn = self.bed[1] - self.regional[1]
         if self.foot_known:
-            before = self.foot_slope
+            foot, before = self.foot_u, self.foot_slope
         else:
             foot = self._meets(self.regional, c)
             if foot is None or foot >= hang:
                 return None
             before = self.f + c * (foot - self.u0)
-        return self.f + c * (hang - self.u0) - before - turn
+        asked = self._gain(foot, hang) * (before - self.regional[1]) + self.bed[1]
+        return self.f + c * (hang - self.u0) - asked
+
+    def _gain(self, foot, hang):
+        """Solid share of the rock at the one cut-off then over the other's now."""
+        if self.compaction is None:
+            return 1.0
+        zf = self.regional[0] + self.regional[1] * foot
+        zh = self.bed[0] + self.bed[1] * hang
+        return self.compaction.gains(zh, zf, zh)[0]
 
     def curvature(self):
         """Give the curvature that satisfies the bed, or None."""

@@ -639,12 +639,15 @@ def _predict_from(study, frame, picks, known, given, options):
     """
     spec = study.construction
     model = model_named(spec.model, shear_angle=spec.shear_angle)
+    compaction = compaction_from(spec.compaction, study.length_unit)
     hang_given = given is not None and given.hanging_wall is not None
 
     def predicted(**errors):
         fault = known
         if not hang_given:
-            fault = carry_on(known, picks, spec.horizon, model, **errors)
+            fault = carry_on(
+                known, picks, spec.horizon, model, compaction=compaction, **errors
+            )
         return (fault, *_predict(study, frame, picks, fault, given, options))
 
     fault, prediction, result = predicted()

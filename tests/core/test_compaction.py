@@ -388,6 +388,24 @@ def test_study_runs_with_compaction_and_predicts_further_horizons_with_it():
     assert np.abs(found - expected[:, 1])[reached].max() < 15.0
 
 
+def test_unseen_piece_of_fault_turns_as_a_compacted_bed_asks():
+    """The fault known down to -900 only: heave and fault found within 2 %.
+
+    Read as if nothing had compacted, the arc between the cut-offs turns too little:
+    heave 811 for 900 and the fault 277 off (our own run).
+    """
+    world = World(EXPONENTIAL, reach=9000.0)
+    deep, tops = truth_points(world)
+    bed = compacted_bed(world, SHALE, 300.0, -200.0)
+    tops = np.vstack([tops[tops[:, 0] < world.footwall[0]], bed[1:]])
+    study = study_for(world, 1.0, compaction=ENTRY)
+    near = sources_for(world, deep[deep[:, 1] > -900.0], tops)
+    made = run(study, near, [line_for(world)]).sections[0].prediction
+    truth = np.array([world.fault.z(v) for v in made.trace.x - 4000.0])
+    assert made.separation.heave == pytest.approx(900.0, rel=0.02)
+    assert np.abs(made.trace.z - truth).max() < 0.02 * 3500.0
+
+
 def test_study_with_compaction_is_written_and_read_alike():
     """The entry survives its way through JSON; left out it is not written."""
     study = Study.from_dict(changed(DOCUMENT, "construction", "compaction", to=ENTRY))
