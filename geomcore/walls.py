@@ -23,6 +23,8 @@ LEDGE = 6
 #: A step belongs to the gap if it stands out by more than this share of the steepest
 #: one (common practice, no source): drag and dip changes beside the fault do not.
 STEEP_SHARE = 0.25
+#: Picks a line of either block is laid through where its walls are told by level.
+_NEXT_PICKS = 4
 #: dz/dx of a line that only tells left from right.
 _UPRIGHT = -1e6
 
@@ -55,11 +57,51 @@ def assign_walls(picks, fault):
     Picks
         Horizon and dip picks get ``footwall`` or ``hanging wall`` unless their
         source declares it.
+
+    Notes
+    -----
+    A listric fault lies beyond its straight continuation, so below what is known of
+    it footwall picks may seem to lie beyond it. The first ones of a horizon there are
+    given back to the footwall as long as they lie nearer to its line than to that of
+    the next picks.
     """
     beyond = picks.x > fault.x_at(picks.z)
     side = np.where(beyond, "hanging wall", "footwall").astype(object)
     bed = np.isin(picks.kind, ("horizon", "dip")) & np.isfinite(picks.z)
-    return replace(picks, wall=np.where(bed & (picks.wall == ""), side, picks.wall))
+    told = bed & (picks.wall == "")
+    wall = np.where(told, side, picks.wall)
+    if not is_upright(fault):
+        guessed = told & (picks.z < fault.z[-1]) & picks.used
+        for name in sorted(set(picks.name[guessed])):
+            own = (picks.kind == "horizon") & (picks.name == name) & picks.used
+            wall[_strays(picks, wall, own, guessed)] = "footwall"
+    return replace(picks, wall=wall)
+
+
+def _strays(picks, wall, own, guessed):
+    """Give the footwall picks of one horizon that a straight fault puts beyond it."""
+    foot = np.flatnonzero(own & (wall == "footwall"))
+    hang = np.flatnonzero(own & guessed & (wall == "hanging wall"))
+    foot, hang = (i[np.argsort(picks.x[i], kind="stable")] for i in (foot, hang))
+    foot = foot[-_NEXT_PICKS:]
+    count = 0
+    while len(foot) > 1 and len(hang) - count > 2:
+        at = hang[count]
+        after = hang[count + 1 : count + 1 + _NEXT_PICKS]
+        low, high = (_level_at(picks, i, picks.x[at]) for i in (after, foot))
+        apart = high - low > 4.0 * picks.sigma_z[at]
+        if not apart or picks.z[at] - low <= high - picks.z[at]:
+            break
+        count += 1
+    return hang[:count]
+
+
+def _level_at(picks, chosen, x):
+    """Level of a line through picks, carried to a place; their mean if at one place."""
+    d, z = picks.x[chosen] - x, picks.z[chosen]
+    if np.ptp(d) == 0:
+        return float(z.mean())
+    return float(np.polyfit(d, z, 1)[1])
 
 
 def leave_out_near_fault(picks, fault, buffer, gridded=()):

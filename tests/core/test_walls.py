@@ -195,6 +195,27 @@ def test_walls_of_a_tracked_time_horizon_follow_its_gap_not_the_trace(off):
     assert picks.wall[~inside].tolist() == expected.tolist()
 
 
+def test_footwall_pick_beyond_the_straight_continuation_stays_in_the_footwall():
+    """From trace and dip alone, a pick at the footwall's level is footwall.
+
+    The trace stands at z = 600; the straight line from it passes the footwall level
+    at x = 600, the listric fault itself only at x = 750.
+    """
+    trace = KnownFault(np.array([0.0]), np.array([600.0]), 5.0, -1.0, -1.0, "the dip")
+    x = [-900.0, -100.0, 700.0, 1300.0, 1500.0, 1750.0, 2000.0]
+    z = [-50.0, -20.0, 5.0, -500.0, -450.0, -400.0, -355.0]
+    walls = assign_walls(table(x, z, sigma=6.0), trace).wall.tolist()
+    assert walls == ["footwall"] * 3 + ["hanging wall"] * 4
+    # without that pick, or with picks down to there, the fault alone tells the walls
+    others = [i for i in range(7) if i != 2]
+    fewer = table(np.take(x, others), np.take(z, others), sigma=6.0)
+    assert assign_walls(fewer, trace).wall.tolist() == walls[:2] + walls[3:]
+    known = KnownFault(
+        np.array([0.0, 1300.0]), np.array([600.0, -700.0]), 5.0, -1.0, -1.0, "picks"
+    )
+    assert assign_walls(table(x, z, sigma=6.0), known).wall[2] == "hanging wall"
+
+
 def test_gap_below_the_known_fault_tells_the_walls():
     """A footwall grid value over the straight continuation of a listric fault stays so.
 
