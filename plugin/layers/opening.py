@@ -112,7 +112,8 @@ def _name(crs):
 def _is_world_mercator(crs):
     """Tell EPSG:3857 under any of its names, and its sisters, by area of use."""
     box = crs.bounds()
-    wide = box.isEmpty() or box.width() > 180.0
+    # an area across the date line has its east end west of its west end
+    wide = box.isNull() or box.width() % 360.0 > 180.0 or box.width() == 360.0
     return crs.projectionAcronym() in ("merc", "webmerc") and wide
 
 
@@ -129,7 +130,7 @@ def _refuse_crs(reason, crs):
 def _utm_of(crs):
     """Name the UTM zone in which a CRS's area of use lies, where it is small."""
     box = crs.bounds() if crs.isValid() else None
-    if box is None or box.isEmpty() or box.width() > 12.0:
+    if box is None or box.isEmpty() or not 0.0 < box.width() <= 12.0:
         return ", for example its UTM zone"
     middle = box.center()
     zone = int((middle.x() + 180.0) // 6.0) % 60 + 1

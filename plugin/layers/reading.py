@@ -197,17 +197,23 @@ class FeatureTable:
         Their geometries; ``parts.owner`` is the number of the feature.
     columns : list of list
         Attribute values by field, in the order asked for.
-    lost : int
-        Features that could not be reprojected.
+    lost : frozenset of int
+        Ids of the features that could not be reprojected; they have no geometry.
     """
 
     fid: np.ndarray
     parts: Parts
     columns: list
-    lost: int = 0
+    lost: frozenset = frozenset()
 
-    def once(self):
-        """Keep each feature once that was read several times, in order of its id."""
+    def in_order(self):
+        """Give the features in order of their id, each once.
+
+        Whatever order a provider takes, the same features give the same arrays, and
+        so the same digest.
+        """
+        if np.all(np.diff(self.fid) > 0):
+            return self
         fid, first = np.unique(self.fid, return_index=True)
         number = np.full(len(self.fid), -1)
         number[first] = np.arange(len(first))
@@ -252,9 +258,9 @@ def read_table(layer, indices, crs, transform_context, feedback=None, near=None)
     for features in _iterators(layer, request, near):
         _collect(features, indices, fid, blocks, columns, feedback)
     table = FeatureTable(
-        np.array(fid, dtype=np.int64), Parts.joined(blocks), columns, len(set(lost))
+        np.array(fid, dtype=np.int64), Parts.joined(blocks), columns, frozenset(lost)
     )
-    return table.once() if near is not None and len(near) > 1 else table
+    return table.in_order()
 
 
 def _request(layer, indices, crs, transform_context, feedback, count_lost):
@@ -388,13 +394,12 @@ def _azimuths(values):
 def _features(declaration, layer, wanted, table, surface, feedback):
     """Make flat arrays of what was read; refuse and count what cannot be used."""
     values = dict(zip(wanted, table.columns))
-    refused = {"cannot be reprojected": table.lost} if table.lost else {}
+    refused = {"cannot be reprojected": len(table.lost)} if table.lost else {}
     parts, z = table.parts, None
     placed = np.bincount(parts.owner, minlength=len(table.fid)) > 0
-    # those that could not be reprojected come without geometry too
-    empty = int(np.count_nonzero(~placed)) - table.lost
-    if empty > 0:
-        refused["no geometry"] = empty
+    lost = np.isin(table.fid, list(table.lost)) if table.lost else False
+    _count(refused, "no geometry", ~placed & ~np.asarray(lost))
+    parts = _on_the_map(parts, refused)
     if "z" in values:
         z, text = numbers(values["z"])
         _count(refused, "text in a number field", text & placed)
@@ -411,6 +416,16 @@ def _features(declaration, layer, wanted, table, surface, feedback):
         surface,
         refused,
     )
+
+
+def _on_the_map(parts, refused):
+    """Refuse features with coordinates that are no numbers."""
+    if np.isfinite(parts.xy.sum()):
+        return parts
+    vertex = ~np.isfinite(parts.xy).all(axis=1)
+    lost = np.unique(np.repeat(parts.owner, parts.count)[vertex])
+    _count(refused, "coordinates that are no numbers", np.ones(len(lost)))
+    return parts.select(~np.isin(parts.owner, lost))
 
 
 def _count(refused, reason, mask):
@@ -521,11 +536,6 @@ def read_section_lines(layer, id_field, crs, transform_context, feedback=None):
         )
     indices = [field_index(layer.fields(), id_field, where)] if id_field else []
     table = read_table(layer, indices, crs, transform_context, feedback)
-    if table.lost:
-        say(
-            feedback,
-            f"{where}: {table.lost} lines cannot be reprojected and are left out.",
-        )
     names = texts(table.columns[0]) if indices else [str(i) for i in table.fid]
     return [_section_line(i, names[i], table, id_field) for i in range(len(names))]
 
@@ -540,11 +550,15 @@ def _section_line(i, name, table, id_field):
     name = str(name).strip()
     if not name:
         name, problem = f"feature {table.fid[i]}", f"the field '{id_field}' is empty."
-    if len(own) == 0:
+    if table.fid[i] in table.lost:
+        problem = "the line cannot be reprojected to the study's CRS."
+    elif len(own) == 0:
         problem = "the feature has no geometry."
     elif len(own) > 1:
         problem = f"the line has {len(own)} parts."
     if len(own):
         first = table.parts.offsets[own[0]]
         vertices = table.parts.xy[first : first + table.parts.count[own[0]]]
+    if not np.isfinite(vertices).all():
+        problem = "the line lies where the study's CRS has no coordinates."
     return SectionLine(name, vertices, problem)
