@@ -64,7 +64,7 @@ MARKERS = {
 def pick_marker(kind):
     """Make the mark of a kind of pick."""
     shape, size, *rest = MARKERS[kind]
-    return smaller_far_away(marker(shape, size, *rest), size, round(size * 0.45, 2))
+    return smaller_far_away(marker(shape, size, *rest), size, round(size * 0.35, 2))
 
 
 def pick_classes():
@@ -282,7 +282,7 @@ def constrained_marker():
     is black, the assumed part open diamonds, and the predicted part next to nothing,
     since the fault's own line is drawn there.
     """
-    symbol = marker(Shape.Circle, 1.0, VERMILLION, VERMILLION, 0.2)
+    symbol = marker(Shape.Circle, 1.8, VERMILLION, VERMILLION, 0.2)  # as in legends
     layer = symbol.symbolLayer(0)
     prop = QgsSymbolLayer.Property
     size = by_state(

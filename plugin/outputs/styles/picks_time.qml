@@ -177,7 +177,7 @@
               <Option type="Map" name="properties">
                 <Option type="Map" name="size">
                   <Option type="bool" name="active" value="true"/>
-                  <Option type="QString" name="expression" value="CASE WHEN @map_scale IS NULL THEN 1.5 WHEN @map_scale > 30000 THEN 0.68 ELSE 1.5 END"/>
+                  <Option type="QString" name="expression" value="CASE WHEN @map_scale IS NULL THEN 1.5 WHEN @map_scale > 30000 THEN 0.52 ELSE 1.5 END"/>
                   <Option type="int" name="type" value="3"/>
                 </Option>
               </Option>
@@ -222,7 +222,7 @@
               <Option type="Map" name="properties">
                 <Option type="Map" name="size">
                   <Option type="bool" name="active" value="true"/>
-                  <Option type="QString" name="expression" value="CASE WHEN @map_scale IS NULL THEN 2.2 WHEN @map_scale > 30000 THEN 0.99 ELSE 2.2 END"/>
+                  <Option type="QString" name="expression" value="CASE WHEN @map_scale IS NULL THEN 2.2 WHEN @map_scale > 30000 THEN 0.77 ELSE 2.2 END"/>
                   <Option type="int" name="type" value="3"/>
                 </Option>
               </Option>
@@ -267,7 +267,7 @@
               <Option type="Map" name="properties">
                 <Option type="Map" name="size">
                   <Option type="bool" name="active" value="true"/>
-                  <Option type="QString" name="expression" value="CASE WHEN @map_scale IS NULL THEN 2.0 WHEN @map_scale > 30000 THEN 0.9 ELSE 2.0 END"/>
+                  <Option type="QString" name="expression" value="CASE WHEN @map_scale IS NULL THEN 2.0 WHEN @map_scale > 30000 THEN 0.7 ELSE 2.0 END"/>
                   <Option type="int" name="type" value="3"/>
                 </Option>
               </Option>
@@ -312,7 +312,7 @@
               <Option type="Map" name="properties">
                 <Option type="Map" name="size">
                   <Option type="bool" name="active" value="true"/>
-                  <Option type="QString" name="expression" value="CASE WHEN @map_scale IS NULL THEN 2.2 WHEN @map_scale > 30000 THEN 0.99 ELSE 2.2 END"/>
+                  <Option type="QString" name="expression" value="CASE WHEN @map_scale IS NULL THEN 2.2 WHEN @map_scale > 30000 THEN 0.77 ELSE 2.2 END"/>
                   <Option type="int" name="type" value="3"/>
                 </Option>
               </Option>
@@ -357,7 +357,7 @@
               <Option type="Map" name="properties">
                 <Option type="Map" name="size">
                   <Option type="bool" name="active" value="true"/>
-                  <Option type="QString" name="expression" value="CASE WHEN @map_scale IS NULL THEN 1.3 WHEN @map_scale > 30000 THEN 0.59 ELSE 1.3 END"/>
+                  <Option type="QString" name="expression" value="CASE WHEN @map_scale IS NULL THEN 1.3 WHEN @map_scale > 30000 THEN 0.45 ELSE 1.3 END"/>
                   <Option type="int" name="type" value="3"/>
                 </Option>
               </Option>
