@@ -1,5 +1,6 @@
 """The construction: the fault from the rollover of a horizon."""
 
+from collections.abc import Mapping
 from dataclasses import dataclass, field
 from typing import Optional
 
@@ -13,7 +14,8 @@ from .fitting import solve_by_fit
 from .kinematics import from_shear_frame
 from .problem import MarchOptions, Problem, bed_from, solve_march
 from .profile import pool_to_increasing
-from .uncertainty import solution_sigma
+from .trust import error_shares, trusted_reach
+from .uncertainty import error_columns
 
 __all__ = [
     "SOLVERS",
@@ -121,6 +123,10 @@ class Prediction:
     detail : FitDetail or None
         What the fit has to tell besides.
     compaction : Compaction or None
+    error_shares : mapping of str to float
+        Standard deviation of the deepest point from each source of error alone.
+    has_deep_tie : bool
+        Deep ties hold the fault.
     """
 
     section_id: str
@@ -137,6 +143,13 @@ class Prediction:
     doubts: tuple = field(default=())
     detail: object = None
     compaction: object = None
+    error_shares: Mapping[str, float] = field(default_factory=dict)
+    has_deep_tie: bool = False
+
+    @property
+    def trust(self):
+        """Give the last point that can be trusted (see `trusted_reach`)."""
+        return trusted_reach(self, self.has_deep_tie)
 
     @property
     def strips(self):
@@ -232,7 +245,8 @@ def predict_fault(
             "Extend the section or the picks into the hanging wall.",
         )
     x, z = _unfolded(problem, solution)
-    trace = _trace(problem, solution, x, z)
+    errors = error_columns(problem, solution)
+    trace = _trace(problem, solution, x, z, errors)
     detachment = _detachment(problem, solution)
     return Prediction(
         section.section_id,
@@ -249,6 +263,8 @@ def predict_fault(
         tuple(march_doubts(problem, solution, trace, detachment)),
         solution.detail,
         problem.options.compaction,
+        error_shares(errors),
+        bool(len(fault.tie_x)) and solver == "fit",
     )
 
 
@@ -342,7 +358,7 @@ def _unfolded(problem, solution):
     return even, np.interp(even, *pool_to_increasing(x, solution.z)[:2])
 
 
-def _trace(problem, solution, x, z):
+def _trace(problem, solution, x, z, errors):
     """Join the known fault above the footwall cut-off to the marched part."""
     fault = problem.fault
     above = fault.x < problem.separation.footwall.x - 1e-6
@@ -364,7 +380,7 @@ def _trace(problem, solution, x, z):
         np.degrees(np.arctan(-np.gradient(full_z, full_x))),
         strip,
         state,
-        np.r_[np.full(n, fault.sigma), solution_sigma(problem, solution)],
+        np.r_[np.full(n, fault.sigma), errors.sigma],
     )
 
 

@@ -373,10 +373,11 @@ def regional_and_separation(picks, fault, horizon, model, spec, given, options):
     if hang is None:
         hang, _ = extend_to_fault(hanging, fault, "hanging wall", where)
     far = _far_picks(hanging, fault, spec)
+    slope = _given_slope(picks, spec, where)
     moved_by, regional, given_foot = 0.0, None, foot
     for _ in range(4 if far is not None else 1):
         regional, foot = _regional(
-            footwall, far, moved_by, fault, given_foot, spec, where
+            footwall, far, moved_by, fault, given_foot, spec, slope, where
         )
         separation = Separation(horizon, foot, hang)
         moved_by = model.displacement(separation.heave, separation.throw)
@@ -390,6 +391,25 @@ def _unique(doubts):
     return list(dict.fromkeys(doubts))
 
 
+def _given_slope(picks, spec, where):
+    """Slope of the regional where it is given, or taken from another horizon."""
+    if spec.dip is not None:
+        return -np.tan(np.radians(spec.dip))
+    if not spec.parallel_to:
+        return None
+    other = profile_from_picks(picks.of("horizon", spec.parallel_to, "footwall"))
+    try:
+        return fit_line(other.x, other.z, other.sigma, robust=spec.robust).slope
+    except PicksError:
+        raise PicksError(
+            "regional-picks",
+            f"horizon '{spec.parallel_to}' has {len(other)} footwall pick(s): it gives "
+            "no dip for the regional.",
+            where,
+            "Name another horizon, or give the dip.",
+        ) from None
+
+
 def _far_picks(hanging, fault, spec):
     if spec.far_from is None:
         return None
@@ -397,7 +417,7 @@ def _far_picks(hanging, fault, spec):
     return (hanging.x[far], hanging.z[far], hanging.sigma[far])
 
 
-def _regional(footwall, far, moved_by, fault, foot, spec, where):
+def _regional(footwall, far, moved_by, fault, foot, spec, slope, where):
     """Regional against the footwall cut-off, and that cut-off."""
     x, z, sigma = footwall.x, footwall.z, footwall.sigma
     if spec.footwall_within is not None:
@@ -409,7 +429,6 @@ def _regional(footwall, far, moved_by, fault, foot, spec, where):
             np.r_[z, far[1]],
             np.r_[sigma, far[2]],
         )
-    slope = None if spec.dip is None else -np.tan(np.radians(spec.dip))
     if spec.z is not None and foot is None:
         foot = CutOff(
             "footwall",
@@ -422,7 +441,7 @@ def _regional(footwall, far, moved_by, fault, foot, spec, where):
     if through and slope is None and len(x) < 1:
         slope = 0.0
     try:
-        regional = fit_line(x, z, sigma, slope=slope, through=through)
+        regional = fit_line(x, z, sigma, slope, through, spec.robust)
     except PicksError as error:
         raise PicksError(error.code, error.reason, where, error.remedy) from None
     if foot is not None:

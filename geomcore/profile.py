@@ -195,7 +195,7 @@ def fit_covariance(normal, residual, free, sigma):
     return np.linalg.inv(normal) * (excess if excess > chance else 1.0)
 
 
-def fit_line(x, z, sigma, slope=None, through=None):
+def fit_line(x, z, sigma, slope=None, through=None, robust=False):
     """Fit a straight regional to picks by weighted least squares.
 
     Parameters
@@ -206,6 +206,9 @@ def fit_line(x, z, sigma, slope=None, through=None):
         Fixed slope dz/dx; only the level is fitted.
     through : tuple (x, z), optional
         Point it has to go through; only the slope is fitted.
+    robust : bool
+        Give picks that miss by more than twice their sigma less weight (Huber's
+        rule, five rounds), so that one bad pick does not tilt the line.
 
     Returns
     -------
@@ -227,6 +230,42 @@ def fit_line(x, z, sigma, slope=None, through=None):
             f"{len(x)} footwall pick(s) cannot carry a regional.",
             remedy="Give the regional level and dip, or more footwall picks.",
         )
+    found = _line_parameters(x, z, sigma, slope, through)
+    stated, bent = sigma, 0
+    for _ in range(5 if robust else 0):
+        x0, z0, level, gradient, *_ = found
+        miss = np.abs(z - z0 - level - gradient * (x - x0)) / stated
+        bent = int((miss > 2.0).sum())
+        # Huber: beyond 2 sigma a pick pulls with constant force
+        sigma = stated * np.sqrt(np.maximum(miss / 2.0, 1.0))
+        found = _line_parameters(x, z, sigma, slope, through)
+    x0, z0, level, gradient, design, free = found
+    residual = z - z0 - level - gradient * (x - x0)
+    cov = fit_covariance(design.T @ design, residual, len(x) - len(free), sigma)
+    full = np.zeros((2, 2))
+    at = [("level", "slope").index(k) for k in free]
+    full[np.ix_(at, at)] = cov
+    return Regional(
+        x0,
+        float(z0 + level),
+        float(gradient),
+        (full[0, 0], full[0, 1], full[1, 1]),
+        len(x),
+        f"fitted to {len(x)} picks" + (f", {bent} with less weight" if bent else ""),
+    )
+
+
+def _line_parameters(x, z, sigma, slope, through):
+    """Weighted least squares of level and slope, either of which may be fixed.
+
+    Returns
+    -------
+    x0, z0, level, gradient : float
+        z = z0 + level + gradient (x - x0).
+    design : ndarray
+    free : list of str
+        Parameters that were fitted.
+    """
     w = 1.0 / sigma
     x0 = float(np.average(x, weights=w**2)) if through is None else through[0]
     z0 = 0.0 if through is None else through[1]
@@ -236,20 +275,8 @@ def fit_line(x, z, sigma, slope=None, through=None):
     free = [k for k in free if not (k == "level" and through is not None)]
     design = np.column_stack([columns[k] for k in free]) * w[:, None]
     found = dict(zip(free, np.linalg.lstsq(design, (z - fixed) * w, rcond=None)[0]))
-    level, gradient = found.get("level", 0.0), found.get("slope", 0.0)
-    residual = z - fixed - level - gradient * (x - x0)
-    cov = fit_covariance(design.T @ design, residual, len(x) - len(free), sigma)
-    full = np.zeros((2, 2))
-    at = [("level", "slope").index(k) for k in free]
-    full[np.ix_(at, at)] = cov
-    return Regional(
-        x0,
-        float(z0 + level),
-        float(gradient if slope is None else slope),
-        (full[0, 0], full[0, 1], full[1, 1]),
-        len(x),
-        f"fitted to {len(x)} picks",
-    )
+    gradient = found.get("slope", 0.0) if slope is None else slope
+    return x0, z0, found.get("level", 0.0), gradient, design, free
 
 
 def line_through(x0, z0, slope, how="given"):

@@ -145,15 +145,28 @@ class RegionalSpec:
     far_from : float, optional
         Hanging-wall picks farther than this beyond the fault are judged to be back
         at regional; they are moved back by the oblique heave and fitted too.
+    robust : bool
+        Picks that miss by more than twice their sigma get less weight.
+    parallel_to : str
+        Horizon whose footwall picks give the dip; only the level is fitted to the
+        horizon's own.
     """
 
     z: Optional[float] = None
     dip: Optional[float] = None
     footwall_within: Optional[float] = None
     far_from: Optional[float] = None
+    robust: bool = False
+    parallel_to: str = ""
 
     def __post_init__(self):
         where = "construction.regional"
+        require(
+            not (self.parallel_to and self.dip is not None),
+            "both dip and parallel_to are given.",
+            where,
+            "Give one of them.",
+        )
         distances = {"footwall_within": self.footwall_within, "far_from": self.far_from}
         _more_than(0, where, **distances)
         require(
@@ -262,6 +275,13 @@ class ConstructionSpec:
             f"there is no solver '{self.solver}'.",
             where,
             "Use one of: " + ", ".join(SOLVERS) + ".",
+        )
+        require(
+            self.compaction is None or self.regional.far_from is None,
+            "with compaction far hanging-wall picks have sagged below the regional and "
+            "cannot be fitted with it.",
+            "construction",
+            "Leave regional.far_from out.",
         )
 
 

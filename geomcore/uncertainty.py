@@ -15,7 +15,6 @@ __all__ = [
     "error_columns",
     "moved_problem",
     "parameter_roots",
-    "solution_sigma",
 ]
 
 
@@ -38,18 +37,17 @@ class ErrorColumns:
     columns: np.ndarray
     source: np.ndarray
 
+    @property
+    def sigma(self):
+        """One standard deviation of F at the nodes."""
+        return np.sqrt((self.columns**2).sum(axis=1))
+
     def at(self, x, without=()):
         """Give the columns at other places, some sources left out."""
         keep = ~np.isin(self.source.astype(str), without)
         j = np.clip(np.searchsorted(self.x, x), 1, len(self.x) - 1)
         f = ((x - self.x[j - 1]) / (self.x[j] - self.x[j - 1]))[:, None]
         return ((1 - f) * self.columns[j - 1] + f * self.columns[j])[:, keep]
-
-
-def solution_sigma(problem, solution):
-    """Give one standard deviation of the predicted fault at fixed x, at its nodes."""
-    columns = error_columns(problem, solution).columns
-    return np.sqrt((columns**2).sum(axis=1))
 
 
 def error_columns(problem, solution):
