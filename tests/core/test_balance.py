@@ -1,6 +1,7 @@
 """Area balance: lost areas, the detachment they give, and the restored section."""
 
 import math
+import sys
 from dataclasses import replace
 
 import numpy as np
@@ -246,8 +247,9 @@ def test_measured_displacement_makes_it_a_test():
     assert made.z == pytest.approx(lost.regional_z - lost.total / 1000.0)
     # without pick errors only H is unsure: dz = A/H^2 dH
     assert made.sigma == pytest.approx(lost.total / 1000.0**2 * 50.0)
-    with pytest.raises(ConstructionError, match="where it was measured"):
+    with pytest.raises(ConstructionError, match="where it was measured") as caught:
         detachment_from_area(lost, 1000.0)
+    assert caught.value.code == "displacement-source"
 
 
 def test_error_of_the_displacement_follows_from_the_cut_offs():
@@ -393,8 +395,18 @@ def test_interval_of_the_detachment_covers_what_it_says():
 
 def test_line_needs_two_points_apart():
     """Points at one place carry no line."""
-    with pytest.raises(ConstructionError, match="carry no line"):
+    with pytest.raises(ConstructionError, match="carry no line") as caught:
         line_with_errors([1.0, 1.0], [0.0, 1.0], 0.1, 0.1)
+    assert caught.value.code == "too-few-points"
+
+
+def test_intervals_say_that_they_need_scipy(monkeypatch):
+    """Without scipy the line is there, its intervals are off with a sentence."""
+    line = line_with_errors([0.0, 1.0, 2.0], [0.0, 1.1, 1.9], 0.1, 0.1)
+    monkeypatch.setitem(sys.modules, "scipy.special", None)
+    with pytest.raises(ConstructionError, match="need the Python package") as caught:
+        line.slope_interval()
+    assert caught.value.code == "no-scipy"
 
 
 # --- beside the construction ---------------------------------------------------------

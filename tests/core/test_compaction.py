@@ -127,8 +127,10 @@ def test_impossible_laws_are_refused(phi0, c):
 
 def test_unknown_preset_names_the_known_ones():
     """The refusal lists what there is."""
-    with pytest.raises(ConstructionError, match="shale, sand, chalk, shaly sand"):
+    names = "shale, sand, chalk, shaly sand"
+    with pytest.raises(ConstructionError, match=names) as caught:
         preset("granite")
+    assert caught.value.code == "unknown-porosity-law"
 
 
 # --- the construction ------------------------------------------------------------
@@ -439,6 +441,15 @@ def test_compaction_that_is_not_stated_whole_is_refused(entry, words):
     with pytest.raises((StudyError, ConstructionError), match=words) as caught:
         Study.from_dict(document)
     assert "construction.compaction" in str(caught.value)
+
+
+def test_far_picks_are_no_regional_where_rock_compacts():
+    """Far out the bed has sagged with its columns: it is not back at the regional."""
+    document = changed(DOCUMENT, "construction", "compaction", to=ENTRY)
+    document["construction"]["regional"] = {"far_from": 6000.0}
+    with pytest.raises(StudyError, match="sagged below the regional") as caught:
+        Study.from_dict(document)
+    assert "far_from" in caught.value.remedy
 
 
 def test_own_law_is_per_length_unit_of_the_study():

@@ -12,6 +12,10 @@ WORDS = {"cut-off", "cut-offs", "us-ft", "heaveline-study"}
 #: One word is a code too where it says all.
 CODES_OF_ONE_WORD = {"cancelled"}
 MODULES = (
+    "balance",
+    "balancing",
+    "burial",
+    "compaction",
     "construction",
     "cutoffs",
     "documents",
@@ -19,10 +23,14 @@ MODULES = (
     "fault",
     "forward",
     "kinematics",
+    "lostarea",
     "picks",
+    "porosity",
     "problem",
     "profile",
     "recipe",
+    "regression",
+    "restoration",
     "section",
     "separation",
     "sources",
