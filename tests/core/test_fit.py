@@ -179,9 +179,9 @@ def test_straight_fault_is_the_limit_of_ever_more_smoothness():
     a, b = system.matrix, system.right
     scale = np.log(np.trace(a.T @ a) / np.trace(penalty))
     args = a.T @ a, penalty, a.T @ b, b @ b, a.shape[1]
-    gaps = [_evidence(scale + w, *args) - straight_evidence(system) for w in (14, 18)]
-    # evidence counts from differences of 10 on: half a unit is nothing
-    assert abs(gaps[1]) < 0.5
+    gaps = [_evidence(scale + w, *args) - straight_evidence(system) for w in (8, 14)]
+    # stiffer still, and rounding of the normal matrix takes over
+    assert abs(gaps[1]) < 0.05
     assert abs(gaps[1]) < abs(gaps[0])
 
 
