@@ -273,17 +273,16 @@ def _gdal_dataset(layer):
     names = [source]
     if decoded.get("path") and not decoded.get("layerName"):
         names.append(decoded["path"])
-    before = gdal.GetUseExceptions()
-    gdal.UseExceptions()
-    try:
-        for name in names:
-            try:
-                return gdal.OpenEx(name, gdal.OF_RASTER | gdal.OF_READONLY)
-            except RuntimeError:
-                continue
-    finally:
-        if not before:
-            gdal.DontUseExceptions()
+    for name in names:
+        gdal.PushErrorHandler("CPLQuietErrorHandler")
+        try:
+            dataset = gdal.OpenEx(name, gdal.OF_RASTER | gdal.OF_READONLY)
+        except RuntimeError:  # where another plugin has GDAL raise errors
+            dataset = None
+        finally:
+            gdal.PopErrorHandler()
+        if dataset is not None:
+            return dataset
     return None
 
 
@@ -296,18 +295,11 @@ def _of_gdal(dataset, layer):
     mask = band.GetMaskBand() if masked else None
     scale, offset = band.GetScale() or 1.0, band.GetOffset() or 0.0
 
-    def read(column, row, width, height):
-        raw = band.ReadAsArray(column, row, width, height)
-        if raw is None:
-            _refuse(
-                layer,
-                f"pixels at column {column}, row {row} cannot be read: "
-                f"{gdal.GetLastErrorMsg()}",
-                "Check the file.",
-            )
+    def read(*window):
+        raw = _window(band, window, layer)
         if mask is None:
             return raw
-        hidden = mask.ReadAsArray(column, row, width, height) == 0
+        hidden = _window(mask, window, layer) == 0
         return np.where(hidden, np.nan, _known(raw, nodata))
 
     def known(raw):
@@ -320,6 +312,21 @@ def _of_gdal(dataset, layer):
     )
     shape = (dataset.RasterXSize, dataset.RasterYSize)
     return _Raster(read, known, kind, shape, dataset.GetGeoTransform(), dataset)
+
+
+def _window(band, window, layer):
+    """Read a window; GDAL gives None or, where it is set to, raises an error."""
+    try:
+        raw, why = band.ReadAsArray(*window), gdal.GetLastErrorMsg()
+    except RuntimeError as error:
+        raw, why = None, error
+    if raw is None:
+        _refuse(
+            layer,
+            f"pixels at column {window[0]}, row {window[1]} cannot be read: {why}",
+            "Check the file.",
+        )
+    return raw
 
 
 def _nodata_values(layer, own):
