@@ -121,7 +121,7 @@ def result_layers(geopackage, names=None):
             f"{geopackage}|layername={name}",
             LAYERS[name].title,
             visible=name not in _HIDDEN,
-            expanded=name != "section_lines",
+            expanded=name not in ("section_lines", *_HIDDEN),
         )
         for name in order
         if names is None or name in names

@@ -3,7 +3,6 @@
 import math
 
 from qgis.core import (
-    Qgis,
     QgsCategorizedSymbolRenderer,
     QgsClassificationRange,
     QgsExpressionContextUtils,
@@ -135,19 +134,25 @@ def fit_raster(layer):
     renderer = layer.renderer()
     if not isinstance(renderer, QgsSingleBandPseudoColorRenderer):
         return
-    found = layer.dataProvider().bandStatistics(
-        renderer.inputBand(),
-        Qgis.RasterBandStatistic.Min | Qgis.RasterBandStatistic.Max,
-    )
-    if not found.minimumValue < found.maximumValue:
+    values = _seen(layer, renderer.inputBand())
+    if not values.count():
         return
-    limits = round_limits(found.minimumValue, found.maximumValue)
+    limits = round_limits(float(values.min()), float(values.max()))
     renderer.setClassificationMin(limits[0])
     renderer.setClassificationMax(limits[-1])
     ramp = renderer.shader().rasterShaderFunction()
     ramp.setMinimumValue(limits[0])
     ramp.setMaximumValue(limits[-1])
     ramp.classifyColorRamp(len(limits), renderer.inputBand())
+
+
+def _seen(layer, band):
+    """Read a raster at no more than a thousand cells a side, cells without data masked.
+
+    Its statistics would do, but their call differs between versions of QGIS.
+    """
+    columns, rows = min(layer.width(), 1000), min(layer.height(), 1000)
+    return layer.dataProvider().block(band, layer.extent(), columns, rows).as_numpy()
 
 
 def fit_balls(document, layer, layer_name):

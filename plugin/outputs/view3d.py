@@ -48,7 +48,7 @@ def add_3d_view(project, layers, extent, z_middle, azimuth):
         elev="0",
         dist=f"{_DISTANCE * side:.10g}",
         pitch=f"{_PITCH:g}",
-        yaw=f"{azimuth % 360.0:g}",
+        yaw=f"{-azimuth % 360.0:g}",  # QGIS turns the camera counter-clockwise
     )
     project.viewsManager().readXml(root, document)
 

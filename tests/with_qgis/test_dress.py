@@ -18,6 +18,7 @@ from heaveline.plugin.fields import LAYERS, Table
 from heaveline.plugin.layers import write_geopackage
 from heaveline.plugin.outputs import colours, dress, project, ranges
 from heaveline.plugin.outputs.tables import run_tables
+from osgeo import gdal
 from qgis.core import (
     Qgis,
     QgsCoordinateReferenceSystem,
@@ -575,7 +576,7 @@ def project_file(results, tmp_path):
     shutil.copy(results, folder)
     crs = QgsCoordinateReferenceSystem(CRS)
     return project.make_project(
-        folder / "job.qgz", CONTENT, crs, "A title", "An abstract", look_along=0.0
+        folder / "job.qgz", CONTENT, crs, "A title", "An abstract", look_along=27.0
     )
 
 
@@ -657,6 +658,62 @@ def test_project_keeps_a_3d_view_without_the_ground(project_file):
         assert 'name="Faults in 3D"' in view
         assert 'terrain-rendering-enabled="0"' in view
         assert 'id="results_predicted_fault_traces"' in view
+        assert 'yaw="333"' in view  # seen in the desktop: it counts counter-clockwise
+
+
+@pytest.fixture
+def ground_file(tmp_path):
+    """A raster that rises from 120 m in the west to 480 m in the east, with a hole."""
+    values = np.tile(np.linspace(120.0, 480.0, 40), (30, 1)).astype(np.float32)
+    values[3, 5] = -9999.0
+    path = tmp_path / "ground.tif"
+    raster = gdal.GetDriverByName("GTiff").Create(
+        str(path), 40, 30, 1, gdal.GDT_Float32
+    )
+    raster.SetGeoTransform((EAST, 100.0, 0.0, NORTH, 0.0, -100.0))
+    raster.SetProjection(crs_of_tests().toWkt())
+    raster.GetRasterBand(1).SetNoDataValue(-9999.0)
+    raster.GetRasterBand(1).WriteArray(values)
+    raster = None  # closes the file
+    return path
+
+
+def ground_project(path):
+    """A project with the raster as its terrain."""
+    style = project.INPUT_STYLES / "ground.qml"
+    layers = (project.ProjectLayer(path.name, "Ground", style),)
+    return project.make_project(
+        path.with_name("ground.qgz"),
+        (project.ProjectGroup("Base", layers),),
+        crs_of_tests(),
+        "T",
+        terrain="Ground",
+    )
+
+
+def test_raster_is_coloured_over_its_own_range(qgis_app, ground_file):
+    """Colours run over the elevations that are there, holes left out."""
+    read = read_project(ground_project(ground_file))
+    (layer,) = read.mapLayersByName("Ground")
+    renderer = layer.renderer()
+    assert (renderer.classificationMin(), renderer.classificationMax()) == (100, 500)
+    items = renderer.shader().rasterShaderFunction().colorRampItemList()
+    assert (items[0].value, items[-1].value) == (100, 500)
+    assert layer.elevationProperties().isEnabled()
+
+
+def test_terrain_of_a_project_is_found_anywhere(qgis_app, ground_file, tmp_path):
+    """Profiles and 3D views stand on the raster, and its path stays out of the file."""
+    made = ground_project(ground_file)
+    assert str(tmp_path) not in project_text(made)
+    moved = tmp_path / "moved"
+    moved.mkdir()
+    for path in (made, ground_file):
+        shutil.move(str(path), moved)
+    read = read_project(moved / made.name)
+    terrain = read.elevationProperties().terrainProvider()
+    assert terrain.layer().name() == "Ground"
+    assert terrain.heightAt(EAST + 50.0, NORTH - 1550.0) == pytest.approx(120.0)
 
 
 def crs_of_tests():
