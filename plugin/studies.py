@@ -417,12 +417,14 @@ def draw_plots(run, folder, steps):
     int
         Number of sections drawn.
     """
-    from ..geomcore.plots import save_section_figure, section_figure
+    from ..geomcore import __version__
+    from ..geomcore.plots import FigureOptions, save_section_figure, section_figure
 
+    options = FigureOptions.of_run(run, made_with=f"Heaveline {__version__}")
     names = file_names([s.frame.section_id for s in run.sections])
     for i, (section, name) in enumerate(zip(run.sections, names)):
         steps.check()
-        figure = section_figure(run.study, section)
+        figure = section_figure(run.study, section, options)
         save_section_figure(figure, folder / name, PLOT_FORMATS)
         steps.progress((i + 1) / len(run.sections))
     return len(run.sections)
