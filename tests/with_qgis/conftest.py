@@ -12,6 +12,8 @@ from pathlib import Path
 import pytest
 
 os.environ.setdefault("QT_QPA_PLATFORM", "offscreen")
+# Tests write some hundred small GeoPackages; none of them has to survive a power cut.
+os.environ.setdefault("OGR_SQLITE_SYNCHRONOUS", "OFF")
 # QGIS's own Python and its core plugin "processing" on Debian.
 sys.path += ["/usr/share/qgis/python", "/usr/share/qgis/python/plugins"]
 
