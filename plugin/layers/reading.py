@@ -33,6 +33,7 @@ _ALLOWED = {
     "fault trace": ("line", "point"),
     "fault": ("point", "line", "raster"),
     "cut-off": ("line", "polygon", "point"),
+    "subsidiary fault": ("point", "line"),
 }
 _NUMBER = re.compile(r"\s*[+-]?(\d+(\.\d*)?|\.\d+)([eE][+-]?\d+)?\s*")
 _NUMERIC = (

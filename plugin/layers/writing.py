@@ -1,15 +1,18 @@
 """Rows to the layers of one GeoPackage, written whole or not at all."""
 
 import errno
+import hashlib
 import os
 import sqlite3
 import time
 from contextlib import closing, suppress
 from dataclasses import dataclass, field
+from math import isfinite
 from pathlib import Path
 from uuid import uuid4
 
 import numpy as np
+from osgeo import gdal
 from qgis.core import (
     Qgis,
     QgsFeature,
@@ -47,6 +50,8 @@ _GEOMETRIES = {
 }
 #: Seconds that a file held open by another program is waited for.
 PATIENCE = 20.0
+#: What SQLite says while another connection has the file locked (BUSY, LOCKED).
+_WAITING = (5, 6)
 _LEFTOVERS = ("-wal", "-shm", "-journal")
 
 
@@ -206,11 +211,23 @@ def reload_layers(path, project=None):
 
 
 def _state(path):
-    """Give what tells that a file has changed; None where there is none."""
+    """Give what tells that a file's content has changed; None where there is none.
+
+    Not its time: QGIS switches a file it only opens for reading out of write-ahead
+    mode, which touches the bytes of the header that are left out here (SQLite file
+    format, section 1.3: format versions, change counter, version-valid-for).
+    """
     if not path.exists():
         return None
-    stat = path.stat()
-    return stat.st_mtime_ns, stat.st_size
+    total = hashlib.blake2b()
+    with path.open("rb") as stream:
+        head = bytearray(stream.read(100))
+        for start, stop in ((18, 20), (24, 28), (92, 96)):
+            head[start:stop] = bytes(stop - start)
+        total.update(head)
+        while block := stream.read(1 << 20):
+            total.update(block)
+    return total.digest()
 
 
 def _check_unchanged(path, state):
@@ -228,13 +245,7 @@ def _copy(path, temporary):
     if not path.exists() or not path.stat().st_size:
         return
     with closing(sqlite3.connect(path, timeout=PATIENCE)) as source:
-        try:
-            known = source.execute(
-                "select count(*) from sqlite_master where name = 'gpkg_contents'"
-            ).fetchone()[0]
-        except sqlite3.DatabaseError:
-            known = 0
-        if not known:
+        if not _is_geopackage(source, path):
             _refuse(
                 "not-written",
                 "there is a file of that name that is no GeoPackage.",
@@ -245,18 +256,33 @@ def _copy(path, temporary):
             _backup(source, target, path)
 
 
+def _is_geopackage(database, path):
+    """Tell a GeoPackage from another database or file."""
+    query = "select count(*) from sqlite_master where name = 'gpkg_contents'"
+    try:
+        return database.execute(query).fetchone()[0] == 1
+    except sqlite3.OperationalError:
+        _refuse_locked(path)
+    except sqlite3.DatabaseError:
+        return False
+
+
+def _refuse_locked(path):
+    _refuse(
+        "output-in-use",
+        f"another program has had it locked for {PATIENCE:.0f} seconds.",
+        path,
+        "Close it there, or give another file.",
+    )
+
+
 def _backup(source, target, path):
     """Copy a database into another, all or nothing, waiting for locks so long."""
     end = time.monotonic() + PATIENCE
 
-    def look(_status, remaining, _total):
-        if time.monotonic() > end and remaining:
-            _refuse(
-                "output-in-use",
-                f"another program has had it locked for {PATIENCE:.0f} seconds.",
-                path,
-                "Close it there, or give another file.",
-            )
+    def look(status, *_):
+        if status in _WAITING and time.monotonic() > end:
+            _refuse_locked(path)
 
     source.backup(target, pages=-1, progress=look, sleep=0.1)
 
@@ -308,12 +334,33 @@ def _write_table(path, table, crs, transform_context):
     del writer  # closes the file
     if not good:
         raise OSError(message or f"layer '{spec.name}' could not be written")
+    if spec.geometry:
+        bare = [i + 1 for i, f in enumerate(features) if not f.hasGeometry()]
+        _take_geometry(path, spec.name, bare)
     return len(features), left_out
 
 
+def _take_geometry(path, name, fids):
+    """Make the geometry of some features null.
+
+    QGIS's writer gives them an empty one, whose bytes hold coordinates of NaN.
+    """
+    if not fids:
+        return
+    dataset = gdal.OpenEx(str(path), gdal.OF_VECTOR | gdal.OF_UPDATE)
+    layer = dataset.GetLayerByName(name)
+    layer.StartTransaction()
+    for fid in fids:
+        feature = layer.GetFeature(fid)
+        feature.SetGeometry(None)
+        layer.SetFeature(feature)
+    layer.CommitTransaction()
+
+
 def _features(table, fields):
+    """Make the features of a table, and say which rows cannot be written."""
     spec = table.spec
-    known = {f.name for f in spec.fields}
+    known = set(spec.names)
     plain = [(f.name, _PLAIN[f.type]) for f in spec.fields]
     make = _maker(spec.geometry)
     features, left_out = [], []
@@ -330,20 +377,16 @@ def _features(table, fields):
                 left_out.append(_left_out_text(spec.name, values, problem))
                 continue
             feature.setGeometry(geometry)
-        feature.setAttributes([_value(values.get(n), kind) for n, kind in plain])
+        get = values.get
+        feature.setAttributes(
+            [None if (v := get(n)) is None or v != v else kind(v) for n, kind in plain]
+        )
         features.append(feature)
     return features, left_out
 
 
 #: Plain Python types of the field types: NumPy's own are unknown to QGIS.
 _PLAIN = {"text": str, "integer": int, "real": float, "boolean": bool}
-
-
-def _value(value, kind):
-    """Give a value as QGIS takes it; None for unknown."""
-    if value is None or value != value:
-        return None
-    return kind(value)
 
 
 def _left_out_text(name, values, problem):
@@ -354,24 +397,35 @@ def _left_out_text(name, values, problem):
 def _maker(geometry):
     """Give the function that makes a geometry of coordinates, or says why not."""
     width = 3 if geometry and geometry.endswith("Z") else 2
-    is_point = geometry in ("Point", "PointZ")
 
-    def make(coordinates):
+    def point(coordinates):
+        try:
+            if len(coordinates) != width:
+                return None, f"its coordinates are no {geometry}."
+            if not isfinite(sum(coordinates)):
+                return None, "a coordinate is unknown."
+            return QgsGeometry(QgsPoint(*map(float, coordinates))), ""
+        except TypeError:
+            return None, f"its coordinates are no {geometry}."
+
+    def line(coordinates):
         array = np.asarray(coordinates, dtype=float)
-        right = (width,) if is_point else (len(array), width)
-        if geometry is None or array.shape != right:
-            return None, f"its coordinates are no {geometry or 'table row'}."
+        if array.ndim != 2 or array.shape[1] != width:
+            return None, f"its coordinates are no {geometry}."
         if not np.isfinite(array).all():
             return None, "a coordinate is unknown."
-        if is_point:
-            return QgsGeometry(QgsPoint(*array.tolist())), ""
         if len(array) < 2:
             return None, "a line needs two points."
-        line = QgsGeometry()
-        line.fromWkb(line_wkb(array))
-        return line, ""
+        made = QgsGeometry()
+        made.fromWkb(line_wkb(array))
+        return made, ""
 
-    return make
+    def nothing(_):
+        return None, "a plain table has no geometries."
+
+    if geometry is None:
+        return nothing
+    return point if geometry in ("Point", "PointZ") else line
 
 
 def _dress_and_check(path, counts, dress):
@@ -402,14 +456,26 @@ def _swap(temporary, path):
     try:
         temporary.replace(path)
     except PermissionError:
-        if not path.exists():
-            raise
-        # Windows does not replace a file that is open: its content is, instead
+        _copy_content(temporary, path)
+
+
+def _copy_content(temporary, path):
+    """Replace a file's content in one transaction, where the file itself cannot be.
+
+    Windows neither replaces nor moves a file that is open, be it by QGIS itself.
+    """
+    is_new = not path.exists()
+    try:
         with (
             closing(sqlite3.connect(temporary)) as source,
             closing(sqlite3.connect(path, timeout=PATIENCE)) as target,
         ):
             _backup(source, target, path)
+    except BaseException:
+        if is_new:
+            with suppress(OSError):
+                path.unlink()
+        raise
 
 
 def _cannot_write(path, error):
@@ -424,7 +490,7 @@ def _cannot_write(path, error):
             "Give another folder, or make this one writable.",
         )
     reason = getattr(error, "strerror", None) or str(error)
-    full = number in (errno.ENOSPC, errno.EDQUOT, errno.EFBIG) or "full" in reason
+    full = number in (errno.ENOSPC, errno.EFBIG) or "full" in reason
     return GeomcoreError(
         "not-written",
         f"it could not be written ({reason}); what was there before is unchanged.",
