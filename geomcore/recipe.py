@@ -15,6 +15,7 @@ __all__ = [
     "FORMAT",
     "SOLVERS",
     "VERSION",
+    "CandidateSpec",
     "CompactionSpec",
     "ConstructionSpec",
     "HorizonSpec",
@@ -219,6 +220,34 @@ class CompactionSpec:
 
 
 @dataclass(frozen=True)
+class CandidateSpec:
+    """A construction to be compared with the study's own.
+
+    Parameters
+    ----------
+    model : str
+        Name of a kinematic model.
+    shear_angle : float
+        Degrees from the vertical, positive antithetic.
+    solver : str
+        One of `SOLVERS`.
+    """
+
+    model: str = MODELS[0].NAME
+    shear_angle: float = 0.0
+    solver: str = "march"
+
+    def __post_init__(self):
+        _known_solver(self.solver, "construction.compare")
+        model_named(self.model, shear_angle=self.shear_angle)
+
+
+def _known_solver(solver, where):
+    remedy = "Use one of: " + ", ".join(SOLVERS) + "."
+    require(solver in SOLVERS, f"there is no solver '{solver}'.", where, remedy)
+
+
+@dataclass(frozen=True)
 class ConstructionSpec:
     """What is constructed and how.
 
@@ -246,6 +275,11 @@ class ConstructionSpec:
     further_horizons : tuple of HorizonSpec
     compaction : CompactionSpec, optional
         Columns keep their solid thickness; the march with vertical shear only.
+    compare : tuple of CandidateSpec
+        Further constructions of every section, set beside the study's own and a
+        straight fault; none if empty.
+    balance : bool
+        Whether the area of every section is balanced.
     """
 
     horizon: str
@@ -261,6 +295,8 @@ class ConstructionSpec:
     regional: RegionalSpec = field(default_factory=RegionalSpec)
     further_horizons: tuple = ()
     compaction: Optional[CompactionSpec] = None
+    compare: tuple = ()
+    balance: bool = False
 
     def __post_init__(self):
         where = "construction"
@@ -270,12 +306,7 @@ class ConstructionSpec:
         require(
             self.samples_per_strip >= 4, "samples_per_strip has to be 4 or more.", where
         )
-        require(
-            self.solver in SOLVERS,
-            f"there is no solver '{self.solver}'.",
-            where,
-            "Use one of: " + ", ".join(SOLVERS) + ".",
-        )
+        _known_solver(self.solver, where)
         require(
             self.compaction is None or self.regional.far_from is None,
             "with compaction far hanging-wall picks have sagged below the regional and "
@@ -448,5 +479,9 @@ def _read_construction(document):
         given["further_horizons"] = tuple(
             read_object(HorizonSpec, h, "construction.further_horizons")
             for h in read_list(document, "further_horizons", where)
+        )
+        given["compare"] = tuple(
+            read_object(CandidateSpec, c, "construction.compare")
+            for c in read_list(document, "compare", where)
         )
     return read_object(ConstructionSpec, document, where, **given)

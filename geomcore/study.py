@@ -10,7 +10,9 @@ from typing import Optional
 import numpy as np
 
 from .assumed import ASSUMED_ERRORS, carry_on, with_assumed_errors
+from .balancing import balance_section
 from .compaction import compaction_from
+from .comparing import compare_section
 from .construction import MarchOptions, predict_fault
 from .cutoffs import (
     CutoffOptions,
@@ -24,7 +26,7 @@ from .digest import digest
 from .errors import Doubt, FrameError, GeomcoreError, StudyError, Unsolved
 from .fault import known_fault
 from .forward import forward_horizon
-from .kinematics import ConstantBedLength, ConstantHeave, model_named
+from .kinematics import ConstantBedLength, ConstantHeave, model_named, tan_of
 from .picks import Picks, PullOptions, SourceCount, prepare_source, pull_source
 from .problem import OtherHorizon
 from .profile import (
@@ -37,6 +39,7 @@ from .profile import (
 from .recipe import FORMAT, HorizonSpec, Study
 from .section import OBLIQUITY_WARNING, SectionFrame, parallel_sections
 from .sources import Features, Grid, vertical_factor
+from .subsidiary import leave_out_near_subsidiaries, measure_subsidiaries
 from .transport import resolve_transport, trace_parts
 from .walls import assign_walls, leave_out_near_fault
 
@@ -201,6 +204,10 @@ class SectionResult:
     horizons : tuple of HorizonPrediction or Unsolved
     doubts : tuple of Doubt
         Of the section as a whole; the prediction carries its own.
+    comparison : Comparison or None
+        Other constructions beside this one; None where not asked for.
+    balance : SectionBalance or Unsolved or None
+        None where not asked for; falsy with the reason where there is none.
     """
 
     frame: SectionFrame
@@ -211,6 +218,8 @@ class SectionResult:
     prediction: object
     horizons: tuple
     doubts: tuple
+    comparison: object = None
+    balance: object = None
 
     @property
     def all_doubts(self):
@@ -495,7 +504,8 @@ def _with_walls(picks, tables, gridded, buffer):
     guide = wall_guide(picks, other)
     if guide is None:
         return picks
-    return leave_out_near_fault(assign_walls(picks, guide), guide, buffer, gridded)
+    picks = leave_out_near_fault(assign_walls(picks, guide), guide, buffer, gridded)
+    return leave_out_near_subsidiaries(picks, buffer, gridded)
 
 
 def pull_picks(
@@ -584,14 +594,10 @@ def construct(study, frame, picks):
         With an `Unsolved` prediction where the section has no solution.
     """
     doubts, separations = [], []
-    horizon = study.construction.horizon
     options = CutoffOptions(study.picks.separation_from, study.picks.separation_to)
     fault = prediction = None
     try:
-        require_depth_of(horizon, picks, frame)
-        given = given_cutoffs(picks.depth, horizon, options)
-        refuse_reverse(given, f"section {frame.section_id}")
-        fault, more = known_fault(picks.depth, given.cutoffs if given else ())
+        fault, more, given = _known_from(study, frame, picks, options)
         doubts += more
         fault, prediction, separation = _predict_from(
             study, frame, picks.depth, fault, given, options
@@ -601,7 +607,7 @@ def construct(study, frame, picks):
         prediction = Unsolved(frame.section_id, error.code, str(error))
     separations += _other_separations(picks, fault, options, separations)
     horizons = _further(study, frame, picks.depth, prediction) if prediction else ()
-    return SectionResult(
+    result = SectionResult(
         frame,
         picks.depth,
         picks.time,
@@ -611,6 +617,38 @@ def construct(study, frame, picks):
         tuple(horizons),
         tuple(doubts),
     )
+    return _with_what_was_asked(study, frame, picks, options, result)
+
+
+def _known_from(study, frame, picks, options):
+    """Give the known fault, its doubts, and the cut-offs that were given."""
+    horizon = study.construction.horizon
+    require_depth_of(horizon, picks, frame)
+    given = given_cutoffs(picks.depth, horizon, options)
+    refuse_reverse(given, f"section {frame.section_id}")
+    return (*known_fault(picks.depth, given.cutoffs if given else ()), given)
+
+
+def _with_what_was_asked(study, frame, picks, options, result):
+    """Add the comparison and the balance, where the study asks for them."""
+    spec = study.construction
+
+    def predict(recipe):
+        known, _, given = _known_from(recipe, frame, picks, options)
+        return _predict_from(recipe, frame, picks.depth, known, given, options)[:2]
+
+    if spec.compare:
+        result = replace(result, comparison=compare_section(study, result, predict))
+    if spec.balance:
+        result = replace(result, balance=_balanced(study, result))
+    return result
+
+
+def _balanced(study, result):
+    try:
+        return balance_section(study, result)
+    except GeomcoreError as error:
+        return Unsolved(result.frame.section_id, error.code, str(error))
 
 
 def require_depth_of(horizon, picks, frame):
@@ -667,8 +705,10 @@ def _predict_from(study, frame, picks, known, given, options):
 def _predict(study, frame, picks, fault, given, options):
     spec = study.construction
     model = model_named(spec.model, shear_angle=spec.shear_angle)
+    subsidiaries, doubts = measure_subsidiaries(picks, spec.horizon)
+    added = sum(f.added_heave(tan_of(model)) for f in subsidiaries)
     found = regional_and_separation(
-        picks, fault, spec.horizon, model, spec.regional, given, options
+        picks, fault, spec.horizon, model, spec.regional, given, options, added
     )
     march_options = MarchOptions(
         spec.samples_per_strip,
@@ -678,7 +718,7 @@ def _predict(study, frame, picks, fault, given, options):
         spec.detachment_sigma,
         compaction_from(spec.compaction, study.length_unit),
     )
-    others, doubts = _fit_horizons(spec, picks, fault, model, options)
+    others, more = _fit_horizons(spec, picks, fault, model, options)
     prediction = predict_fault(
         frame,
         found.separation,
@@ -689,8 +729,9 @@ def _predict(study, frame, picks, fault, given, options):
         march_options,
         spec.solver,
         others,
+        subsidiaries,
     )
-    doubts = (*found.doubts, *doubts, *prediction.doubts)
+    doubts = (*found.doubts, *doubts, *more, *prediction.doubts)
     return replace(prediction, doubts=doubts), found.result
 
 
@@ -708,8 +749,10 @@ def _fit_horizons(spec, picks, fault, model, options):
         try:
             given = given_cutoffs(picks, name, options)
             own = replace(spec.regional, z=None)  # its level is that of another horizon
+            subsidiaries, _ = measure_subsidiaries(picks, name)
+            added = sum(f.added_heave(tan_of(model)) for f in subsidiaries)
             found = regional_and_separation(
-                picks, fault, name, model, own, given, options
+                picks, fault, name, model, own, given, options, added
             )
         except GeomcoreError as error:
             text = f"horizon '{name}' is not in the fit: {error.reason}"
@@ -718,7 +761,9 @@ def _fit_horizons(spec, picks, fault, model, options):
             )
             continue
         bed = _hanging_wall(picks, name)
-        others.append(OtherHorizon(name, found.separation, bed, found.regional))
+        others.append(
+            OtherHorizon(name, found.separation, bed, found.regional, subsidiaries)
+        )
     return tuple(others), doubts
 
 

@@ -16,6 +16,8 @@ MODULES = (
     "balancing",
     "burial",
     "compaction",
+    "comparing",
+    "comparison",
     "construction",
     "cutoffs",
     "documents",
