@@ -62,6 +62,9 @@ VALUES (?, ?, NULL, ?, ?)"""
 _OTHER_DEFAULT = """
 SELECT 1 FROM layer_styles
 WHERE f_table_name = ? AND useAsDefault AND styleName <> ?"""
+_RECORDED = """
+SELECT run_id, inputs_digest, tool_version, made_at FROM runs
+WHERE run_id = ? ORDER BY made_at DESC"""
 _HAS_TABLE = "SELECT 1 FROM sqlite_master WHERE type = 'table' AND name = ?"
 
 
@@ -100,7 +103,7 @@ def dress(layer, layer_name, study, run=None):
     study : Study
         For names, unit, datum and sources.
     run : RunNote, optional
-        Which run made it; read from the layer if not given.
+        Which run made it; read from the layer and its file if not given.
 
     Raises
     ------
@@ -114,7 +117,7 @@ def dress(layer, layer_name, study, run=None):
     """
     if layer_name not in LAYERS:
         return
-    run = _merged(run_of(layer), run)
+    run = _merged(_recorded(layer, run_of(layer)), run)
     style(layer, layer_name, study)
     layer.setMetadata(layer_metadata(layer, layer_name, study, run))
     set_notes(layer, layer_name, study)
@@ -169,6 +172,17 @@ def _merged(found, given):
         return found
     names = RunNote.__dataclass_fields__
     return RunNote(*(getattr(given, n) or getattr(found, n) for n in names))
+
+
+def _recorded(layer, run):
+    """Fill in from the file's own table of runs what the layer does not say."""
+    path, _ = _file_and_table(layer)
+    with closing(sqlite3.connect(path)) as database:
+        try:
+            row = database.execute(_RECORDED, (run.run_id,)).fetchone()
+        except sqlite3.OperationalError:
+            return run  # no such table, or somebody else's of the same name
+    return run if row is None else _merged(RunNote(*(v or "" for v in row)), run)
 
 
 def _file_and_table(layer):

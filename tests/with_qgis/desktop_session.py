@@ -228,10 +228,20 @@ def look_at_map():
     settle()
     found["map"] = inked(iface.mapCanvas().grab().toImage())
     shoot("05_map")
-    iface.mapCanvas().zoomByFactor(0.2)
-    settle()
+    look_near()
     shoot("06_map_near")
     iface.zoomToActiveLayer()
+    settle()
+
+
+def look_near():
+    """Zoom to the cut-offs of the section in the middle."""
+    canvas = iface.mapCanvas()
+    near = middle_section().buffer(10.0, 4)
+    cutoffs = new_results()["Cut-offs"].getFeatures()
+    places = [f.geometry().asPoint() for f in cutoffs if near.contains(f.geometry())]
+    canvas.setCenter(places[0])
+    canvas.zoomScale(15000)
     settle()
 
 

@@ -268,9 +268,22 @@ def test_metadata_states_the_extent_with_depth(results):
 
 
 def test_run_is_read_from_the_layer_where_it_is_not_told(results, product):
-    """Lineage names the run although nobody handed it over."""
-    metadata = opened(results, "cutoffs").metadata()
-    assert any(product.run_id in step for step in metadata.history())
+    """Lineage names run, time, digest and tool although nobody handed them over."""
+    history = "\n".join(opened(results, "cutoffs").metadata().history())
+    for words in (product.run_id, product.digest, "9.9.9", "2026-01-02T03:04:05Z"):
+        assert words in history
+
+
+def test_foreign_table_of_runs_does_no_harm(tables, tmp_path):
+    """Sections laid into somebody's file, which has runs of its own kind."""
+    path = tmp_path / "theirs.gpkg"
+    database = sqlite3.connect(write(path, [Table("runs", [])]))
+    database.execute("ALTER TABLE runs RENAME COLUMN tool_version TO speed")
+    database.commit()
+    database.close()
+    (lines,) = [table for table in tables if table.name == "section_lines"]
+    write(path, [lines])
+    assert opened(path, "section_lines").metadata().history()
 
 
 def test_field_meanings_stand_in_the_standard_table(results):
