@@ -5,7 +5,7 @@ import hashlib
 import os
 import sqlite3
 import time
-from contextlib import closing, suppress
+from contextlib import closing, contextmanager, suppress
 from dataclasses import dataclass, field
 from math import isfinite
 from pathlib import Path
@@ -111,14 +111,10 @@ def write_geopackage(
     state = _state(path)
     temporary = path.with_name(f".{path.stem}-{uuid4().hex[:8]}.gpkg")
     try:
-        _copy(path, temporary)
-        counts, left_out = {}, []
-        for table in tables:
-            counts[table.name], lost = _write_table(
-                temporary, table, crs, transform_context
-            )
-            left_out += lost
-        _dress_and_check(temporary, counts, dress)
+        with _without_waiting_for_the_disk():
+            _copy(path, temporary)
+            counts, left_out = _write_tables(temporary, tables, crs, transform_context)
+            _dress_and_check(temporary, counts, dress)
         _check_target(path, project)
         _check_unchanged(path, state)
         _swap(temporary, path)
@@ -129,6 +125,30 @@ def write_geopackage(
     reload_layers(path, project)
     _report(left_out, feedback)
     return Written(path, counts, tuple(left_out))
+
+
+@contextmanager
+def _without_waiting_for_the_disk():
+    """Let GDAL not wait for the disk at every step: the file is a draft until `_swap`.
+
+    The setting is one of this thread, so that no other work is touched.
+    """
+    name = "OGR_SQLITE_SYNCHRONOUS"
+    before = gdal.GetThreadLocalConfigOption(name)
+    gdal.SetThreadLocalConfigOption(name, "OFF")
+    try:
+        yield
+    finally:
+        gdal.SetThreadLocalConfigOption(name, before)
+
+
+def _write_tables(path, tables, crs, transform_context):
+    counts, left_out = {}, []
+    for table in tables:
+        count, lost = _write_table(path, table, crs, transform_context)
+        counts[table.name] = count
+        left_out += lost
+    return counts, left_out
 
 
 def _refuse(code, reason, path, remedy):
@@ -253,6 +273,7 @@ def _copy(path, temporary):
                 "Give another name, or remove it.",
             )
         with closing(sqlite3.connect(temporary)) as target:
+            target.execute("pragma synchronous = off")
             _backup(source, target, path)
 
 
