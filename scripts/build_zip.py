@@ -39,7 +39,9 @@ def is_wanted(path):
         return False
     if any(part.startswith(".") for part in inside.parts):
         return False
-    return path.suffix not in LEFT_OUT_ENDINGS and not path.name.endswith("~")
+    # QGIS leaves statistics beside every raster it opens
+    is_left_over = path.name.endswith(("~", ".aux.xml"))
+    return path.suffix not in LEFT_OUT_ENDINGS and not is_left_over
 
 
 def content():

@@ -320,9 +320,9 @@ _DRAWING_ORDER = (
     "section_lines",
     "predicted_horizons",
     "predicted_fault_traces",
-    "fault_points",
     "picks_time",
     "picks",
+    "fault_points",
     "cutoffs",
 )
 
