@@ -246,13 +246,30 @@ def test_a_trace_has_a_vertex_at_every_bend(tables):
     assert place[at, 2] == pytest.approx(ground.fault(BEND), abs=12.0)
 
 
-def test_a_trace_ends_with_its_line(tables):
-    """Nothing is drawn beyond the ends of the section."""
-    place, _ = the_row(tables["predicted_fault_traces"], section_id="short")
-    x = [PLACE.x_of(e, n) for e, n, _ in place]
-    assert max(x) <= 6000.0 + 1e-6
-    points = [v["x"] for _, v in rows_of(tables["fault_points"], section_id="short")]
-    assert max(points) + 1600.0 <= 7600.0 + 1600.0
+def test_a_trace_ends_with_its_line(run):
+    """A fault that goes on beyond the drawn line is cut exactly at its ends."""
+    frame = run.sections[list(LINES).index("bent")].frame
+    x = np.linspace(-700.0, frame.x_max + 900.0, 60)
+    line = frame.curve_on_map(x, -0.4 * x)
+    ends = np.array([PLACE.at(*LINES["bent"][0]), PLACE.at(*LINES["bent"][-1])])
+    assert line[[0, -1], :2] == pytest.approx(ends, abs=1e-6)
+    assert line[[0, -1], 2] == pytest.approx([0.0, -0.4 * frame.x_max])
+    assert (distance_to_line(line[:, :2], LINES["bent"]) < 1e-6).all()
+    assert len(frame.curve_on_map(x[:5] - 5000.0, x[:5])) == 0
+    assert len(frame.curve_on_map([], [])) == 0
+
+
+def test_fault_points_beyond_the_line_are_not_drawn(run):
+    """Nodes before the footwall end have no place on the map."""
+    from heaveline.plugin.outputs.tables import Stamp, fault_tables
+
+    section = run.sections[0]
+    trace = section.prediction.trace
+    shifted = dataclasses.replace(trace, x=trace.x - 1700.0)
+    prediction = dataclasses.replace(section.prediction, trace=shifted)
+    moved = dataclasses.replace(section, prediction=prediction)
+    _, points, _ = fault_tables(Stamp("r", "s", "f"), [moved])
+    assert 0 < len(points) == int((shifted.x >= -1e-3).sum()) < len(trace)
 
 
 def test_heave_and_throw_are_those_of_the_ground(tables):
