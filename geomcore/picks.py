@@ -17,6 +17,7 @@ __all__ = [
     "PullOptions",
     "SourceCount",
     "apparent_dip",
+    "corridor_boxes",
     "prepare_source",
     "pull_source",
 ]
@@ -474,20 +475,33 @@ def points_in_corridor(prepared, frame, corridor):
         Their place in the section and how far along strike they come from.
     """
     xy = prepared.data.xy
-    reach = np.abs(frame.strike_vector) * corridor + 2e-3  # and the frame's millimetre
-    low, high = _pieces(frame, corridor)
-    index = prepared.cells.near(low - reach, high + reach)
+    index = prepared.cells.near(*corridor_boxes(frame, corridor))
     x, off = frame.project(xy[index])
     near = np.abs(off) <= corridor  # NaN where the section has no such x
     return index[near], x[near], off[near]
 
 
-def _pieces(frame, corridor):
-    """Cut the section into short pieces and give their boxes."""
-    n = int(np.clip(np.ceil(frame.x_max / max(2.0 * corridor, 1e-9)), 1, 64))
+def corridor_boxes(frame, corridor, most=64):
+    """Give boxes round pieces of a section that hold its whole corridor.
+
+    Parameters
+    ----------
+    frame : SectionFrame
+    corridor : float
+        Half-width along strike.
+    most : int
+        Pieces between two bends at most; more follow an oblique line closer.
+
+    Returns
+    -------
+    low, high : ndarray (n, 2)
+        Opposite corners.
+    """
+    n = int(np.clip(np.ceil(frame.x_max / max(2.0 * corridor, 1e-9)), 1, most))
     x = np.union1d(np.linspace(0.0, frame.x_max, n + 1), frame._x)
     at = frame.to_map(x)
-    return np.minimum(at[:-1], at[1:]), np.maximum(at[:-1], at[1:])
+    reach = np.abs(frame.strike_vector) * corridor + 2e-3  # and the frame's millimetre
+    return np.minimum(at[:-1], at[1:]) - reach, np.maximum(at[:-1], at[1:]) + reach
 
 
 def apparent_dip(dip, dip_azimuth, transport_azimuth):
