@@ -30,6 +30,10 @@ __all__ = [
 #: The two solvers of the kernel: the plain march and the least-squares fit.
 SOLVERS = {"march": solve_march, "fit": solve_by_fit}
 
+#: Strips beyond which a section is refused; the answer is of no use long before
+#: (methods.md section 13, rule 2: after about six).
+MOST_STRIPS = 100
+
 
 @dataclass(frozen=True, eq=False)
 class FaultTrace:
@@ -280,6 +284,7 @@ def check_problem(problem):
     """
     check_compaction(problem.options.compaction, problem.model, problem.where)
     _check_separation(problem)
+    _check_strips(problem)
     _check_fault_in_frame(problem)
     if problem.options.compaction is not None:
         _check_surfaces(problem)
@@ -299,6 +304,20 @@ def _check_surfaces(problem):
         3.0 * regional.sigma_at(ends) + least,
         problem.where,
     )
+
+
+def _check_strips(problem):
+    """Refuse a march of more strips than anybody could trust, or a computer hold."""
+    bed, hang = problem.bed, problem.separation.hanging_wall
+    strips = (bed.x[-1] - hang.x) / problem.oblique_heave
+    if strips > MOST_STRIPS:
+        raise ConstructionError(
+            "too-many-strips",
+            f"with an oblique heave of {problem.oblique_heave:.1f} it takes "
+            f"{strips:.0f} strips to the end of the picks; the limit is {MOST_STRIPS}.",
+            problem.where,
+            "Use a horizon of larger heave, or check the cut-offs.",
+        )
 
 
 def _check_separation(problem):

@@ -436,6 +436,14 @@ def test_known_piece_steeper_than_the_shear_planes_is_refused():
     assert "fault dips" in str(error)
 
 
+def test_heave_that_needs_more_strips_than_anybody_trusts_is_refused():
+    """A heave of metres against kilometres of picks ends in words, not in memory."""
+    hang = World(EXPONENTIAL).hanging_wall
+    error = refusal(separation=cut((hang[0] - 2.0, hang[1] + 2.0), hang))
+    assert error.code == "too-many-strips"
+    assert "strips to the end" in str(error)
+
+
 def test_bed_that_ends_within_one_heave_is_refused():
     """A bed shorter than a strip says nothing of the fault at depth."""
     bed = direct_inputs(World(EXPONENTIAL))["bed"]
