@@ -62,6 +62,8 @@ _PREDICTED = (
     "predicted_horizons",
     "cutoffs",
     "march_table",
+    "method_comparison",
+    "balance",
     "runs",
 )
 

@@ -555,6 +555,29 @@ _DECLARED = (
         least=0.0,
         advanced=True,
     ),
+    Parameter(
+        "COMPARE",
+        "long text",
+        "Compare with these constructions",
+        "Each section is constructed by these too, and tested against a straight "
+        "fault; the results go to the table method_comparison and a figure of their "
+        "own. Kinematic model, shear angle and solver, separated by semicolons, such "
+        "as: constant heave 0 march; constant heave 30 fit; constant slip. Without "
+        "an angle 0 is taken, without a solver the march. Or a JSON list as a "
+        "study's construction.compare.",
+        optional=True,
+        advanced=True,
+    ),
+    Parameter(
+        "BALANCE",
+        "yes or no",
+        "Balance the sections",
+        "Lost area of every horizon, the detachment it gives, and restored lengths go "
+        "to the table balance. The area of one horizon is no independent test. Not "
+        "for models that do not keep area; the table says so.",
+        default=False,
+        advanced=True,
+    ),
     # ---- horizon from fault -------------------------------------------------------
     Parameter(
         "PREDICTED_TRACES",

@@ -7,7 +7,7 @@ projects rely on them. Add, never rename.
 from dataclasses import dataclass
 from typing import Optional
 
-__all__ = ["LAYERS", "FieldSpec", "LayerSpec", "Table"]
+__all__ = ["LAYERS", "ON_REQUEST", "FieldSpec", "LayerSpec", "Table"]
 
 
 @dataclass(frozen=True)
@@ -242,6 +242,39 @@ _PICKS_TIME = LayerSpec(
     "they are converted to depth.",
 )
 
+_SHARE = (
+    "alone, as one standard deviation of z at the deepest point of the trace, "
+    f"{_UNIT}; null where none was stated. What an assumed piece of the fault adds is "
+    "in none of these shares."
+)
+_TRUST = (
+    _real(
+        "trusted_x",
+        "Trusted to x",
+        f"Last x along transport that is trusted, {_UNIT}; null where none is.",
+    ),
+    _real("trusted_z", "Trusted to z", f"The fault there; {_UP}."),
+    _text(
+        "trusted_until",
+        "Trust ends because",
+        "The 80 % band is wider than 15 % of the depth below the regional, or six "
+        "strips without a deep tie; null where the whole trace is trusted.",
+    ),
+    _real("sigma_picks", "Sigma from picks", f"Noise of the bed's picks {_SHARE}"),
+    _real(
+        "sigma_known_fault",
+        "Sigma from known fault",
+        f"Error of the known piece of the fault {_SHARE}",
+    ),
+    _real(
+        "sigma_regional",
+        "Sigma from regional",
+        f"Level and dip of the regional, which count in every strip, {_SHARE}",
+    ),
+    _real("sigma_cutoffs", "Sigma from cut-offs", f"Both cut-offs {_SHARE}"),
+    _real("sigma_shear_angle", "Sigma from shear angle", f"Shear angle {_SHARE}"),
+)
+
 _PREDICTED_FAULT_TRACES = LayerSpec(
     "predicted_fault_traces",
     "LineStringZ",
@@ -289,6 +322,7 @@ _PREDICTED_FAULT_TRACES = LayerSpec(
             "Movement type",
             "CGI vocabulary of fault movement types.",
         ),
+        *_TRUST,
         _text("length_unit", "Length unit", "Unit of lengths and z: m, ft or us-ft."),
         _text("vertical_datum", "Vertical datum", "What elevations are counted from."),
         _WARNINGS,
@@ -467,6 +501,154 @@ _INPUT_STATEMENT = LayerSpec(
     "What came in, how it was converted, and what became of it, one row a source.",
 )
 
+_METHOD_COMPARISON = LayerSpec(
+    "method_comparison",
+    None,
+    (
+        *_STAMP,
+        _SECTION,
+        _text("method", "Method", "Kinematic model, or 'straight fault'."),
+        _text("solver", "Solver", "'march' or 'fit'; null for the straight fault."),
+        _SHEAR,
+        _HEAVE,
+        _THROW,
+        _real(
+            "detachment_z",
+            "Detachment z",
+            f"Level the fault flattens into, null where none is reached; {_UP}.",
+        ),
+        _real(
+            "deepest_z",
+            "Deepest z",
+            f"Where the data end: the fault goes at least this deep; {_UP}.",
+        ),
+        _real("dip", "Dip", "Dip of the straight fault in degrees; null for others."),
+        _real(
+            "misfit_rms",
+            "Misfit rms",
+            "Of the bed's picks, in units of their standard deviation; for the "
+            "straight fault that of regional and cut-offs is counted too. Null for "
+            "the march, which reproduces its bed by definition.",
+        ),
+        _real(
+            "spread_max",
+            "Largest spread",
+            "Deepest less shallowest fault of all constructions of the section, where "
+            f"that is largest in their common reach, {_UNIT}; the same in all its "
+            "rows, null with fewer than two.",
+        ),
+        _real(
+            "log_ratio",
+            "Log likelihood ratio",
+            "Twice the log of the likelihood of a smooth curve over that of a "
+            "straight fault; 10 and more is very strong evidence for a curve. Null "
+            "without scipy.",
+        ),
+        _text("verdict", "Verdict", "'curved', 'straight' or 'not resolved'."),
+        _text("text", "Evidence", "For and against a straight fault, in words."),
+        _text("status", "Status", "'solved' or 'not solved'."),
+        _text("reason", "Reason", "Why it was not solved."),
+    ),
+    "Comparison of methods",
+    "Each section by several constructions, the study's own first, and by a straight "
+    "fault through its cut-offs, one row each.",
+)
+
+_AREA = "square of the study's length unit"
+
+_BALANCE = LayerSpec(
+    "balance",
+    None,
+    (
+        *_STAMP,
+        _SECTION,
+        _text(
+            "horizon",
+            "Horizon",
+            "Name of the horizon, or 'all pre-growth horizons' for the line of area "
+            "against regional through several of them.",
+        ),
+        _real(
+            "lost_area",
+            "Lost area",
+            "Between regional and fault from cut-off to cut-off, and between regional "
+            f"and bed beyond, to one shear line for all horizons, {_AREA}.",
+        ),
+        _real(
+            "lost_area_sigma",
+            "Sigma of lost area",
+            f"One standard deviation of it, {_AREA}.",
+        ),
+        _real(
+            "gap_area",
+            "Gap above the fault",
+            f"Part of it from cut-off to cut-off, {_AREA}.",
+        ),
+        _real(
+            "oblique_heave",
+            "Oblique heave",
+            "Heave + throw tan(shear angle) of the horizon's own cut-offs; for all "
+            f"horizons the slope of their line, {_UNIT}.",
+        ),
+        _real(
+            "area_detachment_z",
+            "Detachment z from area",
+            "Regional less area over oblique heave: the fault's mean elevation under "
+            "the last strip, and the detachment only where the area has levelled "
+            f"off; {_UP}.",
+        ),
+        _real(
+            "area_detachment_sigma",
+            "Sigma of detachment from area",
+            f"One standard deviation of it, {_UNIT}.",
+        ),
+        _real(
+            "area_detachment_low",
+            "Detachment from area, low",
+            f"Lower end of the 90 % interval from several horizons; {_UP}.",
+        ),
+        _real(
+            "area_detachment_high",
+            "Detachment from area, high",
+            f"Upper end of that interval; {_UP}.",
+        ),
+        _real(
+            "construction_detachment_z",
+            "Detachment z of the construction",
+            "Level the construction flattens into, null where none is reached; for all "
+            f"horizons its mean under the same last strip; {_UP}.",
+        ),
+        _text(
+            "convergence",
+            "Convergence",
+            "Whether area over oblique heave has levelled off towards the end of the "
+            "picks.",
+        ),
+        _real(
+            "unfolded_length",
+            "Unfolded length",
+            f"Length of the bed now, between its first and last point, {_UNIT}.",
+        ),
+        _real(
+            "length_before",
+            "Length before",
+            f"Length of the regional it came from, {_UNIT}.",
+        ),
+        _real(
+            "strain",
+            "Strain",
+            "Change of length over the length before, positive where the bed "
+            "lengthened.",
+        ),
+        _text("status", "Status", "'balanced' or 'not balanced'."),
+        _text("reason", "Reason", "Why there is no balance, or no restored length."),
+        _text("note", "Note", "What the numbers are worth as a test, in words."),
+    ),
+    "Balance",
+    "Lost area, the detachment it gives beside that of the construction, and restored "
+    "lengths, one row a horizon. The area of one horizon is no independent test.",
+)
+
 _RUNS = LayerSpec(
     "runs",
     None,
@@ -505,10 +687,15 @@ LAYERS = {
         _CUTOFFS,
         _PREDICTED_HORIZONS,
         _MARCH_TABLE,
+        _METHOD_COMPARISON,
+        _BALANCE,
         _INPUT_STATEMENT,
         _RUNS,
     )
 }
+
+#: Tables that are written only where the study asks for what they hold.
+ON_REQUEST = (_METHOD_COMPARISON.name, _BALANCE.name)
 
 
 @dataclass(frozen=True, eq=False)

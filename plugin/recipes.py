@@ -399,7 +399,54 @@ def _construction(values):
         detachment_z=values.number("DETACHMENT_Z"),
         detachment_sigma=values.number("DETACHMENT_SIGMA"),
         regional=regional,
+        compare=candidates(values),
+        balance=values.yes("BALANCE"),
     )
+
+
+def candidates(values):
+    """Read COMPARE: constructions in words, or a JSON list of them.
+
+    Parameters
+    ----------
+    values : Values
+
+    Returns
+    -------
+    tuple of CandidateSpec
+
+    Raises
+    ------
+    StudyError, ConstructionError
+        If an entry is no construction.
+    """
+    from ..geomcore.documents import read_object
+    from ..geomcore.errors import StudyError
+    from ..geomcore.recipe import CandidateSpec
+
+    text = values.text("COMPARE")
+    if not text.startswith(("[", "{")):
+        return tuple(_candidate(part) for part in names_in(text.replace("\n", ";")))
+    document, _ = values.json("COMPARE")
+    if not isinstance(document, list):
+        raise StudyError("bad-study", "a list is expected.", "COMPARE")
+    return tuple(read_object(CandidateSpec, entry, "COMPARE") for entry in document)
+
+
+def _candidate(text):
+    """Read one construction in words: model, perhaps angle, perhaps solver."""
+    from ..geomcore.recipe import SOLVERS, CandidateSpec
+
+    words, given = text.split(), {}
+    if words[-1] in SOLVERS:
+        given["solver"] = words.pop()
+    if words and _is_number(words[-1]):
+        given["shear_angle"] = float(words.pop().replace(",", "."))
+    return CandidateSpec(" ".join(words), **given)
+
+
+def _is_number(word):
+    return word.replace(",", ".", 1).lstrip("+-").replace(".", "", 1).isdigit()
 
 
 def names_in(text):

@@ -14,6 +14,7 @@ from ..geomcore import study as core
 from ..geomcore.digest import digest
 from ..geomcore.errors import GeomcoreError, StudyError, Unsolved
 from .earlier import with_earlier_runs
+from .fields import ON_REQUEST
 from .layers import (
     length_unit_of,
     open_layer,
@@ -304,8 +305,10 @@ def result_tables(run):
     Returns
     -------
     list of Table
+        Comparison and balance only where the study asks for them.
     """
-    return rows.run_tables(run, _now(), __version__, versions())
+    made = rows.run_tables(run, _now(), __version__, versions())
+    return [t for t in made if len(t) or t.name not in ON_REQUEST]
 
 
 def horizon_tables(study, section_set, items, sha256):

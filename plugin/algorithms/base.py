@@ -316,6 +316,8 @@ def _new_style():
 _DRAWING_ORDER = (
     "runs",
     "input_statement",
+    "balance",
+    "method_comparison",
     "march_table",
     "section_lines",
     "predicted_horizons",

@@ -33,6 +33,8 @@ class PredictFault(ConstructingAlgorithm):
         declared("SAMPLES_PER_STRIP"),
         declared("SEPARATION_FROM"),
         declared("SEPARATION_TO"),
+        declared("COMPARE"),
+        declared("BALANCE"),
         declared("PICKS_TIME"),
         declared("VERTICAL_DATUM"),
         declared("OUTPUT"),
@@ -47,6 +49,8 @@ class PredictFault(ConstructingAlgorithm):
         "fault_points",
         "cutoffs",
         "march_table",
+        "method_comparison",
+        "balance",
         "runs",
     )
 

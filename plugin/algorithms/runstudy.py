@@ -28,6 +28,8 @@ class RunStudy(ConstructingAlgorithm):
         "cutoffs",
         "predicted_horizons",
         "march_table",
+        "method_comparison",
+        "balance",
         "input_statement",
         "runs",
     )

@@ -24,7 +24,7 @@ from qgis.core import (
 )
 
 from ...geomcore.errors import GeomcoreError
-from ..fields import LAYERS
+from ..fields import LAYERS, ON_REQUEST
 from ..layers import open_layer
 from .ranges import fit_raster
 from .view3d import add_3d_view
@@ -106,13 +106,14 @@ def result_layers(geopackage, names=None):
     geopackage : str
         Path as the project should name it, relative to the project.
     names : collection of str, optional
-        Only these of `fields.LAYERS`; all if not given.
+        Only these of `fields.LAYERS`; those that every run writes if not given.
 
     Returns
     -------
     tuple of ProjectLayer
         Uppermost first.
     """
+    names = set(LAYERS) - set(ON_REQUEST) if names is None else names
     order = ("cutoffs", "fault_points", "picks", "picks_time")
     order += ("predicted_fault_traces", "predicted_horizons", "section_lines")
     order += tuple(name for name in LAYERS if name not in order)
@@ -124,7 +125,7 @@ def result_layers(geopackage, names=None):
             expanded=name not in ("section_lines", *_HIDDEN),
         )
         for name in order
-        if names is None or name in names
+        if name in names
     )
 
 

@@ -6,6 +6,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from ..fields import Table
+from .judging import balance_table, comparison_table, trust_values
 
 __all__ = [
     "Stamp",
@@ -98,6 +99,7 @@ def run_tables(run, made_at, tool_version, versions=None):
     Returns
     -------
     list of Table
+        Those on request (`fields.ON_REQUEST`) are empty where not asked for.
     """
     stamp = Stamp.of(run.study, run.digest, made_at, tool_version)
     frames = [s.frame for s in run.sections]
@@ -109,6 +111,8 @@ def run_tables(run, made_at, tool_version, versions=None):
         *fault_tables(stamp, run.sections),
         cutoffs_table(stamp, run.sections),
         predicted_horizons_table(stamp, _horizons_of(stamp, run.sections)),
+        comparison_table(stamp, run.sections),
+        balance_table(stamp, run.sections),
         input_statement_table(stamp, run.statement),
     ]
     return [*tables, runs_table(stamp, run, tables, versions)]
@@ -284,6 +288,7 @@ def _trace_row(stamp, result, name):
         "location_confidence": None,
         "fault_type_uri": FAULT_TYPE_URI,
         "movement_type_uri": MOVEMENT_TYPE_URI,
+        **trust_values(prediction),
         "length_unit": stamp.length_unit,
         "vertical_datum": stamp.vertical_datum,
         "warnings": _warnings(result.all_doubts),

@@ -1312,13 +1312,15 @@ def test_results_are_loaded_with_their_style(study_file, tmp_path):
     _, done = algorithm.run(parameters, context, feedback, {}, False)
     assert done
     wanted = context.layersToLoadOnCompletion()
-    assert len(wanted) == len(algorithm.LAYERS) - 2
+    assert len(wanted) == len(algorithm.LAYERS) - 4
     from processing.gui.Postprocessing import handleAlgorithmResults
 
     assert handleAlgorithmResults(algorithm, context, feedback, parameters)
     titles = {layer.name(): layer for layer in project.mapLayers().values()}
-    # there are no picks in time and no further horizons: no empty layers are added
+    # there are no picks in time and no further horizons: no empty layers are added;
+    # comparison and balance were not asked for
     filled = set(algorithm.LAYERS) - {"picks_time", "predicted_horizons"}
+    filled -= {"method_comparison", "balance"}
     assert set(titles) == {LAYERS[name].title for name in filled}
     group = project.layerTreeRoot().findGroup("o")
     order = [node.layer().name() for node in group.findLayers()]
