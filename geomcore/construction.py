@@ -11,9 +11,10 @@ from .doubts import march_doubts
 from .errors import ConstructionError
 from .fault import ASSUMED_GAP
 from .fitting import solve_by_fit
-from .kinematics import from_shear_frame
+from .kinematics import ConstantHeave, from_shear_frame
 from .problem import MarchOptions, Problem, bed_from, solve_march
 from .profile import pool_to_increasing
+from .subsidiary import subsidiary_shares, without_gaps
 from .trust import error_shares, trusted_reach
 from .uncertainty import error_columns
 
@@ -131,6 +132,8 @@ class Prediction:
         Standard deviation of the deepest point from each source of error alone.
     has_deep_tie : bool
         Deep ties hold the fault.
+    subsidiaries : tuple of SubsidiaryShare
+        Subsidiary faults of the hanging wall and what each adds to the extension.
     """
 
     section_id: str
@@ -149,6 +152,7 @@ class Prediction:
     compaction: object = None
     error_shares: Mapping[str, float] = field(default_factory=dict)
     has_deep_tie: bool = False
+    subsidiaries: tuple = ()
 
     @property
     def trust(self):
@@ -188,6 +192,7 @@ def predict_fault(
     options=None,
     solver="march",
     others=(),
+    subsidiaries=(),
 ):
     """Predict the fault from the rollover of one horizon by the march.
 
@@ -213,6 +218,8 @@ def predict_fault(
         ``march`` or ``fit``.
     others : sequence of OtherHorizon
         Further horizons, which only the fit uses.
+    subsidiaries : sequence of SubsidiaryFault
+        Faults that cut the horizon in the hanging wall (`measure_subsidiaries`).
 
     Returns
     -------
@@ -232,11 +239,12 @@ def predict_fault(
         f"section {section.section_id}",
         separation,
         fault,
-        bed_from(separation.hanging_wall, bed),
+        without_gaps(bed_from(separation.hanging_wall, bed), subsidiaries),
         regional,
         model,
         options or MarchOptions(),
         tuple(others),
+        tuple(subsidiaries),
     )
     check_problem(problem)
     solution = SOLVERS[solver](problem)
@@ -251,6 +259,8 @@ def predict_fault(
     x, z = _unfolded(problem, solution)
     errors = error_columns(problem, solution)
     trace = _trace(problem, solution, x, z, errors)
+    if solution.detail is None:
+        trace = _with_shadows(trace, x, z, solution, problem.oblique_heave)
     detachment = _detachment(problem, solution)
     return Prediction(
         section.section_id,
@@ -269,6 +279,7 @@ def predict_fault(
         problem.options.compaction,
         error_shares(errors),
         bool(len(fault.tie_x)) and solver == "fit",
+        subsidiary_shares(solution.blocks, problem.oblique_heave),
     )
 
 
@@ -283,11 +294,25 @@ def check_problem(problem):
         above the sediment surface of its time.
     """
     check_compaction(problem.options.compaction, problem.model, problem.where)
+    _check_subsidiaries(problem)
     _check_separation(problem)
     _check_strips(problem)
     _check_fault_in_frame(problem)
     if problem.options.compaction is not None:
         _check_surfaces(problem)
+
+
+def _check_subsidiaries(problem):
+    """Refuse subsidiary faults with models that have no oblique heave to add to."""
+    if problem.subsidiaries and not isinstance(problem.model, ConstantHeave):
+        names = ", ".join(f"'{f.plane.name}'" for f in problem.subsidiaries)
+        raise ConstructionError(
+            "subsidiary-model",
+            f"the subsidiary fault {names} cuts the horizon; {problem.model.label} has "
+            "no heave to which its own could be added.",
+            problem.where,
+            "Use constant heave, or leave the subsidiary faults out of the study.",
+        )
 
 
 def _check_surfaces(problem):
@@ -400,6 +425,43 @@ def _trace(problem, solution, x, z, errors):
         strip,
         state,
         np.r_[np.full(n, fault.sigma), errors.sigma],
+    )
+
+
+def _with_shadows(trace, x, z, solution, oblique_heave):
+    """Put points across the shadows, marked as out of reach: straight by assumption.
+
+    Parameters
+    ----------
+    trace : FaultTrace
+    x, z : ndarray (n,)
+        The solution's nodes, the last ones of the trace.
+    """
+    if solution.blocks is None:
+        return trace
+    step = oblique_heave / max(solution.start - 1, 1)
+    gap = np.flatnonzero(np.diff(solution.u) > 1.5 * step)
+    before = len(trace) - len(x)
+    at, new_x = [], []
+    for i in gap:
+        count = int((solution.u[i + 1] - solution.u[i]) / step)
+        share = np.arange(1, count + 1) / (count + 1.0)
+        new_x.append(x[i] + share * (x[i + 1] - x[i]))
+        at.append(np.full(count, before + i + 1))
+    if not at:
+        return trace
+    at, new_x = np.concatenate(at), np.concatenate(new_x)
+
+    def filled(column, values):
+        return np.insert(column, at, values)
+
+    return FaultTrace(
+        filled(trace.x, new_x),
+        filled(trace.z, np.interp(new_x, x, z)),
+        filled(trace.dip, np.interp(new_x, trace.x, trace.dip)),
+        filled(trace.strip, trace.strip[at]),
+        filled(trace.constrained, np.full(len(at), "out of reach", dtype=object)),
+        filled(trace.sigma_z, np.interp(new_x, trace.x, trace.sigma_z)),
     )
 
 

@@ -94,8 +94,7 @@ def wall_guide(picks, other=None):
     for table in (picks, other):
         if table is None:
             continue
-        for kind in ("fault", "cutoff"):
-            marks = table.of(kind)
+        for marks in (table.of("fault", wall=""), table.of("cutoff")):
             if len(marks):
                 z = (
                     float(np.median(picks.z[np.isfinite(picks.z)]))
@@ -339,7 +338,9 @@ def _found_cutoff(profile, fault, wall, where):
     )
 
 
-def regional_and_separation(picks, fault, horizon, model, spec, given, options):
+def regional_and_separation(
+    picks, fault, horizon, model, spec, given, options, added_heave=0.0
+):
     """Find the regional and the cut-offs of the horizon to be constructed from.
 
     The footwall cut-off is where the regional meets the fault, so that both are
@@ -354,6 +355,8 @@ def regional_and_separation(picks, fault, horizon, model, spec, given, options):
     spec : RegionalSpec
     given : GivenCutoffs or None
     options : CutoffOptions
+    added_heave : float
+        What subsidiary faults add to the oblique heave of the far picks.
 
     Returns
     -------
@@ -380,7 +383,7 @@ def regional_and_separation(picks, fault, horizon, model, spec, given, options):
             footwall, far, moved_by, fault, given_foot, spec, slope, where
         )
         separation = Separation(horizon, foot, hang)
-        moved_by = model.displacement(separation.heave, separation.throw)
+        moved_by = model.displacement(separation.heave, separation.throw) + added_heave
     doubts += _spec_doubts(regional, spec, given_foot, far, where)
     doubts += _level_doubts(regional, footwall, where)
     result = _with_level(separation, footwall, hanging, options, tuple(doubts))

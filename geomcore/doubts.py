@@ -4,12 +4,17 @@ import numpy as np
 
 from .errors import Doubt
 from .fault import ASSUMED_GAP
+from .offsets import unpicked_offsets
+from .subsidiary import subsidiary_doubts
 
 __all__ = ["march_doubts"]
 
 #: Strips beyond which a march without a deep tie should not be trusted
 #: (methods.md section 13, rule 2).
 MANY_STRIPS = 6
+#: Offsets of a horizon smaller than this share of the throw are not pointed out, and
+#: gaps longer than this share of the heave not judged (common practice, no source).
+SMALL_OFFSET, LONG_GAP = 0.02, 0.5
 
 
 def march_doubts(problem, solution, trace, detachment):
@@ -29,6 +34,8 @@ def march_doubts(problem, solution, trace, detachment):
     found = [
         *_of_start(problem),
         *_of_bed(problem),
+        *_of_offsets(problem, solution),
+        *_of_subsidiaries(problem, solution),
         *_of_shear(problem),
         *_of_compaction(problem),
         *_of_trace(solution, trace),
@@ -81,6 +88,58 @@ def _of_bed(problem):
             "gap-in-bed",
             f"no picks for {spacing[i]:.0f} beyond x = {bed.x[i + 1]:.0f}, more than a "
             "strip; the bed is straight there by assumption.",
+        )
+
+
+def _of_offsets(problem, solution):
+    """Point out steps of the bed where no fault is picked; shadows are not judged."""
+    bed, separation, cuts = problem.bed, problem.separation, []
+    if solution.blocks is not None:
+        blocks, u = solution.blocks, bed.x - bed.z * problem.tan
+        for fault, low, high in zip(blocks.faults, blocks.start, blocks.end):
+            inside = bed.x[(u >= low) & (u <= high)]
+            x = np.r_[inside, fault.inboard.x, fault.outboard.x]
+            cuts.append((x.min(), x.max()))
+    for offset in unpicked_offsets(
+        bed.x[1:],
+        bed.z[1:],
+        bed.sigma[1:],
+        SMALL_OFFSET * separation.throw,
+        LONG_GAP * problem.oblique_heave,
+        cuts,
+    ):
+        way = "down" if offset.size < 0 else "up"
+        yield (
+            "unpicked-offset",
+            f"near x = {offset.x:.0f} the bed steps {way} by {abs(offset.size):.0f} "
+            "outwards, more than its slope on both sides and the errors explain, and "
+            "no fault is picked there; a subsidiary fault left out makes the master "
+            "too deep.",
+        )
+
+
+def _of_subsidiaries(problem, solution):
+    """Doubt subsidiary faults in the shear already, and wide shadows."""
+    if solution.blocks is None:
+        return
+    yield from subsidiary_doubts(problem.subsidiaries, problem.model.shear_angle)
+    blocks, tan = solution.blocks, problem.tan
+    widths = blocks.end - blocks.start
+    heaves = problem.oblique_heave + blocks.added[1:]
+    for fault, start, width, heave in zip(
+        problem.subsidiaries, blocks.start, widths, heaves
+    ):
+        if width <= heave:
+            continue
+        at = start + np.interp(start, solution.u, solution.z) * tan
+        beyond = (
+            f"goes on for {width:.0f}" if np.isfinite(width) else "has no end in reach"
+        )
+        yield (
+            "wide-shadow",
+            f"beyond x = {at:.0f} the horizon does not see the master under the "
+            f"subsidiary fault '{fault.plane.name}'; that {beyond}, more than the "
+            "heave, and the fault across it is assumed straight, or ends there.",
         )
 
 

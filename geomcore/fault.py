@@ -115,7 +115,8 @@ def known_fault(picks, cutoffs=()):
     Parameters
     ----------
     picks : Picks
-        Picks of the section; the used ones of kind ``fault`` count.
+        Picks of the section; the used ones of kind ``fault`` count, but for those of
+        subsidiary faults (wall ``hanging wall``).
     cutoffs : sequence of CutOff
         Given cut-offs, which lie on the fault too.
 
@@ -130,7 +131,7 @@ def known_fault(picks, cutoffs=()):
         If the section does not meet the fault, or neither a second point nor a
         dip tells which way it goes.
     """
-    fault = picks.of("fault")
+    fault = picks.of("fault", wall="")
     where = f"section {picks.section_id}"
     x = np.r_[fault.x, [c.x for c in cutoffs]]
     z = np.r_[fault.z, [c.z for c in cutoffs]]

@@ -7,7 +7,8 @@ import numpy as np
 from .errors import ConstructionError
 from .fit import BedRows, PickResiduals, assemble, residuals, solve_fit
 from .kinematics import ConstantHeave
-from .problem import Problem, Solution, bed_from, bed_in_frame
+from .problem import Problem, Solution, bed_from, bed_in_frame, solve_march
+from .subsidiary import blocks_under, without_gaps
 
 __all__ = ["FitDetail", "section_rows", "solve_by_fit"]
 
@@ -15,6 +16,9 @@ __all__ = ["FitDetail", "section_rows", "solve_by_fit"]
 NODES = 10
 #: Standard deviation of a point that is taken as exact, as a share of the throw.
 EXACT = 1e-4
+#: Share of a shadow by which it is widened on the side of its branch point, whose place
+#: depends on the fault: a pick left out costs little, one from the shadow a lot.
+EDGE = 0.1
 
 
 @dataclass(frozen=True, eq=False)
@@ -45,20 +49,45 @@ class FitDetail:
     covariance_root: np.ndarray
 
 
-def _bed_rows(problem, name):
-    """Bed picks beyond the cut-off as rows of the system."""
+def _bed_rows(problem, name, blocks):
+    """Bed picks beyond the cut-off as rows of the system, block by block.
+
+    Picks in the shadow of a subsidiary fault say nothing of the master.
+    """
     bed = bed_in_frame(problem)
-    heave = problem.oblique_heave
     least = EXACT * problem.separation.throw
+    seen = np.arange(len(bed)) > 0
+    if blocks is None:
+        return [_block_rows(problem, name, bed, seen, problem.oblique_heave, least)]
+    seen &= ~blocks.widened(EDGE).in_shadow(bed.x)
+    own = blocks.block_of(bed.x)
+    return [
+        _block_rows(
+            problem, name, bed, seen & (own == j), problem.oblique_heave + more, least
+        )
+        for j, more in enumerate(blocks.added)
+    ]
+
+
+def _block_rows(problem, name, bed, chosen, heave, least):
+    u = bed.x[chosen]
     return BedRows(
         name,
-        bed.x[1:],
-        bed.z[1:],
-        np.maximum(bed.sigma[1:], least),
-        bed.correlation[1:],
-        problem.regional_at(bed.x[1:] - heave),
+        u,
+        bed.z[chosen],
+        np.maximum(bed.sigma[chosen], least),
+        bed.correlation[chosen],
+        problem.regional_at(u - heave),
         heave,
     )
+
+
+def _blocks_of(problem, master):
+    """Blocks of a horizon above the marched fault; None without subsidiary faults."""
+    faults, tan = problem.subsidiaries, problem.tan
+    if not faults:
+        return None
+    return blocks_under(faults, tan, master.u, master.z, problem.oblique_heave)
 
 
 def _problem_of(other, problem):
@@ -67,10 +96,13 @@ def _problem_of(other, problem):
         problem.where,
         other.separation,
         problem.fault,
-        bed_from(other.separation.hanging_wall, other.bed),
+        without_gaps(
+            bed_from(other.separation.hanging_wall, other.bed), other.subsidiaries
+        ),
         other.regional,
         problem.model,
         problem.options,
+        subsidiaries=other.subsidiaries,
     )
 
 
@@ -145,14 +177,28 @@ def solve_by_fit(problem, smoothness=None):
             problem.where,
             "Use the march, or leave compaction out.",
         )
-    u, beds, points = section_rows(problem)
-    system = assemble(u, beds, points)
-    result = solve_fit(system, smoothness, problem.options.robust)
-    return _solution(problem, beds, u, result)
+    robust = problem.options.robust
+    if not problem.subsidiaries:
+        u, beds, points = section_rows(problem)
+        result = solve_fit(assemble(u, beds, points), smoothness, robust)
+        return _solution(problem, beds, u, result, None)
+    master = solve_march(problem)
+    for _ in range(2):  # the second time with branch points on the fit itself
+        blocks = _blocks_of(problem, master)
+        u, beds, points = section_rows(problem, master)
+        result = solve_fit(assemble(u, beds, points), smoothness, robust)
+        master = _solution(problem, beds, u, result, blocks)
+    return master
 
 
-def section_rows(problem):
+def section_rows(problem, master=None):
     """Give nodes, bed rows and fault points of a section's system.
+
+    Parameters
+    ----------
+    problem : Problem
+    master : Solution, optional
+        The march, on which subsidiary faults branch off; found if not given.
 
     Returns
     -------
@@ -162,12 +208,16 @@ def section_rows(problem):
     points : tuple of ndarray (u, z, sigma)
     """
     others = [_problem_of(o, problem) for o in problem.others]
-    beds = [_bed_rows(problem, problem.separation.horizon)]
-    beds += [_bed_rows(p, o.name) for p, o in zip(others, problem.others)]
+    if master is None and problem.subsidiaries:
+        master = solve_march(problem)
+    name = problem.separation.horizon
+    beds = _bed_rows(problem, name, _blocks_of(problem, master))
+    for own, other in zip(others, problem.others):
+        beds += _bed_rows(own, other.name, _blocks_of(own, master))
     u_foot = min(_foot(p) for p in (problem, *others))
     heave = beds[0].heave
     points = _fault_points(problem, others, u_foot)
-    end = max([b.u[-1] for b in beds] + [points[-1, 0]])
+    end = max([b.u[-1] for b in beds if len(b.u)] + [points[-1, 0]])
     count = int(np.ceil((end - u_foot) / (heave / NODES))) + 1
     u = u_foot + heave / NODES * np.arange(max(count, NODES + 2))
     points = _with_detachment(points, problem, beds, u)
@@ -179,10 +229,12 @@ def _foot(problem):
     return foot.x - foot.z * problem.tan
 
 
-def _solution(problem, beds, u, result):
+def _solution(problem, beds, u, result, blocks):
     """Write the result as every solver does, from the horizon's own cut-off on."""
     bed = bed_in_frame(problem)
     heave = problem.oblique_heave
+    if blocks is not None:
+        bed, heave = blocks.seen(bed), heave + blocks.added_at(u)
     origin = np.maximum(u - heave - u[0], 0.0) / (u[1] - u[0])
     index = np.floor(origin + 1e-6).astype(int)
     fraction = np.where(np.abs(origin - index) < 1e-6, 0.0, origin - index)
@@ -208,6 +260,7 @@ def _solution(problem, beds, u, result):
         min(start, len(u)),
         reach=_in_reach(u, beds, problem.fault, problem.tan),
         detail=detail,
+        blocks=blocks,
     )
 
 

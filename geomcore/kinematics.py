@@ -20,6 +20,7 @@ __all__ = [
     "from_shear_frame",
     "model_named",
     "smoothed_line",
+    "tan_of",
     "to_shear_frame",
 ]
 
@@ -44,6 +45,11 @@ def to_shear_frame(x, z, shear_angle):
 def from_shear_frame(u, z, shear_angle):
     """Give x = u + z tan(a), the way back from `to_shear_frame`."""
     return np.asarray(u, dtype=float) + np.asarray(z) * np.tan(np.radians(shear_angle))
+
+
+def tan_of(model):
+    """Give the tangent of a model's shear angle, as in u = x - z tan."""
+    return float(np.tan(np.radians(model.shear_angle)))
 
 
 @dataclass(frozen=True)

@@ -29,7 +29,10 @@ _KIND_OF_ROLE = {
     "fault trace": "fault",
     "fault": "fault",
     "cut-off": "cutoff",
+    "subsidiary fault": "fault",
 }
+#: A fault of the hanging wall says so in its wall; the study's own fault has none.
+_WALL_OF_ROLE = {"fault trace": "", "fault": "", "subsidiary fault": "hanging wall"}
 #: Vertices in one indexed run of a line: short enough to be selective.
 _RUN = 10
 
@@ -81,8 +84,9 @@ class Picks:
         Apparent dip along transport in degrees, positive down towards the hanging
         wall; NaN where none is given.
     kind, name, wall, reason, source : ndarray (n,) of str
-        Kind (`KINDS`), horizon or fault name, wall ('' where not told), reason a
-        pick is left out, key of the source.
+        Kind (`KINDS`), horizon or fault name, wall ('' where not told; a fault pick
+        with ``hanging wall`` is of a subsidiary fault, the study's own fault has
+        none), reason a pick is left out, key of the source.
     source_fid : ndarray (n,)
         Feature the pick came from, None for a grid.
     used : ndarray (n,) of bool
@@ -588,7 +592,7 @@ def pull_source(prepared, frame, options):
         dip=np.nan if no_part else _part_dips(prepared, frame, part, xy, options),
         kind=_KIND_OF_ROLE[declaration.role],
         name=names,
-        wall=declaration.wall or "",
+        wall=_WALL_OF_ROLE.get(declaration.role, declaration.wall or ""),
         source=declaration.key,
         source_fid=None if no_part else data.fid[part],
         used=refused == "",

@@ -1,6 +1,6 @@
 """What one section gives a solver, and what a solver gives back."""
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Optional
 
 import numpy as np
@@ -10,6 +10,7 @@ from .errors import ConstructionError
 from .kinematics import to_shear_frame
 from .profile import Profile, pool_to_increasing
 from .stepping import at_origin, march
+from .subsidiary import blocks_between_cutoffs, blocks_under
 
 __all__ = [
     "MarchOptions",
@@ -21,6 +22,11 @@ __all__ = [
     "solve_march",
     "start_piece",
 ]
+
+#: Times the branch points of subsidiary faults are found anew from the fault.
+PASSES = 3
+#: Heaves of shadow over which the fault is taken as straight at most.
+WIDEST_SHADOW = 1.5
 
 
 @dataclass(frozen=True)
@@ -61,12 +67,15 @@ class OtherHorizon:
     bed : Profile
         In the hanging wall.
     regional : Regional
+    subsidiaries : tuple of SubsidiaryFault
+        How they cut this horizon.
     """
 
     name: str
     separation: object
     bed: Profile
     regional: object
+    subsidiaries: tuple = ()
 
 
 @dataclass(frozen=True, eq=False)
@@ -88,6 +97,9 @@ class Problem:
     options : MarchOptions
     others : tuple of OtherHorizon
         Further horizons the fit uses besides.
+    subsidiaries : tuple of SubsidiaryFault
+        Faults of the hanging wall that cut the horizon, from the master outwards;
+        the bed has no picks in their gaps.
     """
 
     where: str
@@ -98,6 +110,7 @@ class Problem:
     model: object
     options: MarchOptions
     others: tuple = ()
+    subsidiaries: tuple = ()
 
     @property
     def tan(self):
@@ -141,6 +154,9 @@ class Solution:
         By how much the column at the node is thinner than when the fault moved.
     gains : tuple of ndarray (n,), optional
         dF/dF(origin) and dF/dB at the nodes, where they are not 1.
+    blocks : SubsidiaryBlocks, optional
+        Blocks of the hanging wall and the shadows between them, where subsidiary
+        faults cut it.
     """
 
     u: np.ndarray
@@ -155,6 +171,7 @@ class Solution:
     detail: object = None
     thinning: object = 0.0
     gains: object = None
+    blocks: object = None
 
     @property
     def increment(self):
@@ -177,6 +194,8 @@ class Solution:
     def strip(self):
         """Number of the strip of each node, 0 on the start piece."""
         near = self.origin_index + (self.origin_fraction > 0)
+        # across a wide shadow a node hangs on itself; it counts from the last before
+        near = np.clip(near, 0, np.maximum(np.arange(len(near)) - 1, 0))
         steps = np.ones(len(self.u))
         start = np.zeros(self.start)
         return march(near, np.zeros(len(near)), start, steps).astype(int)
@@ -186,6 +205,9 @@ def bed_in_frame(problem):
     """Write the bed against u; noise that breaks its order is averaged."""
     bed, angle, tan = problem.bed, problem.model.shear_angle, problem.tan
     u = to_shear_frame(bed.x, bed.z, angle)
+    if problem.subsidiaries:
+        # beside a subsidiary fault the bed may overturn; along the frame it does not
+        return _overturned(u, bed, tan)
     u, z, sigma, x, length, count = pool_to_increasing(
         u, bed.z, bed.sigma, bed.x, bed.correlation, least=1e-9
     )
@@ -194,6 +216,17 @@ def bed_in_frame(problem):
     slope = np.gradient(z, x) if len(x) > 1 else np.zeros(1)
     # a vertical error of the pick is longer along an inclined shear line
     factor = np.maximum(np.abs(1.0 - slope * tan), 0.2)
+    return Profile(u, z, sigma / factor, length)
+
+
+def _overturned(u, bed, tan):
+    """Write a bed that is single-valued in u only."""
+    order = np.argsort(u, kind="stable")
+    columns = (c[order] for c in (u, bed.z, bed.sigma, bed.correlation))
+    u, z, sigma, length, _ = pool_to_increasing(*columns, least=1e-9)
+    along = np.gradient(z, u) if len(u) > 1 else np.zeros(1)
+    # 1 - B' tan in terms of the slope along the frame
+    factor = np.clip(1.0 / np.abs(1.0 + along * tan), 0.2, None)
     return Profile(u, z, sigma / factor, length)
 
 
@@ -228,7 +261,9 @@ def solve_march(problem):
     """March one section.
 
     The nodes stand one oblique heave over `samples_per_strip` apart, exactly, from
-    the footwall cut-off to the last pick.
+    the footwall cut-off to the last pick. Where subsidiary faults cut the bed there
+    are none in their shadows: the fault is straight across, and the march goes on
+    beyond by the heave of the next block.
 
     Parameters
     ----------
@@ -238,26 +273,66 @@ def solve_march(problem):
     -------
     Solution
     """
+    faults, tan = problem.subsidiaries, problem.tan
+    if not faults:
+        return _march(problem, None)
+    blocks = blocks_between_cutoffs(faults, tan)
+    for _ in range(PASSES):
+        found = _march(problem, blocks, widest=10.0)  # a branch is looked for only
+        heave = problem.oblique_heave
+        blocks = blocks_under(faults, tan, found.u, found.z, heave)
+    return _march(problem, blocks)
+
+
+def _march(problem, blocks, widest=WIDEST_SHADOW):
+    """March with the blocks of the hanging wall known, or None for a single one.
+
+    Shadows wider than so many heaves end it.
+    """
     foot, hang = problem.separation.footwall, problem.separation.hanging_wall
     bed = bed_in_frame(problem)
+    bed = bed if blocks is None else blocks.seen(bed)
     m = problem.options.samples_per_strip
     u0 = foot.x - foot.z * problem.tan
     step = (hang.x - hang.z * problem.tan - u0) / m
     count = int(np.floor((bed.x[-1] - u0) / step + 1e-6)) + 1
     u = u0 + step * np.arange(max(count, m + 1))
+    if blocks is not None:
+        u = u[~blocks.in_shadow(u) | (np.arange(len(u)) <= m)]
     origin = problem.model.origin(u, bed, problem)
-    at = np.maximum((origin - u0) / step, 0.0)
+    if blocks is None:
+        at = np.maximum((origin - u0) / step, 0.0)
+    else:
+        origin = origin - blocks.added_at(u)
+        # between the nodes either side of a shadow the fault is straight
+        at = np.interp(origin, u, np.arange(len(u)))
     index = np.floor(at + 1e-6).astype(int)
     fraction = np.where(np.abs(at - index) < 1e-6, 0.0, at - index)
+    if blocks is not None:
+        last = _last_marched(problem, index, fraction, m + 1, widest)
+        u, index, fraction, origin = (v[:last] for v in (u, index, fraction, origin))
     bed_z = np.interp(u, bed.x, bed.z)
     regional_z = problem.regional_at(origin)
     start = start_piece(problem, u[: m + 1])
     if problem.options.compaction is None:
         z = march(index, fraction, start, bed_z - regional_z)
-        return Solution(u, z, index, fraction, bed_z, regional_z, bed, m + 1)
-    return _compacting(
+        return Solution(
+            u, z, index, fraction, bed_z, regional_z, bed, m + 1, blocks=blocks
+        )
+    solution = _compacting(
         problem.options.compaction, u, index, fraction, start, bed_z, regional_z, bed
     )
+    return replace(solution, blocks=blocks)
+
+
+def _last_marched(problem, index, fraction, start, widest):
+    """Count the nodes up to a shadow too wide to be marched across."""
+    ahead = index + (fraction > 0) >= np.arange(len(index))
+    if problem.options.compaction is None:
+        # a column one heave inboard of the far edge stands that far into the shadow
+        ahead &= fraction > 1.0 - 1.0 / widest
+    ahead[:start] = False
+    return int(np.argmax(ahead)) if ahead.any() else len(index)
 
 
 def _compacting(compaction, u, index, fraction, start, bed_z, regional_z, bed):

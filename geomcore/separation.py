@@ -7,7 +7,13 @@ import numpy as np
 from .errors import PicksError
 from .profile import fit_covariance
 
-__all__ = ["CutOff", "Separation", "extend_to_fault", "level_separation"]
+__all__ = [
+    "CutOff",
+    "Separation",
+    "extend_to_fault",
+    "level_separation",
+    "local_curve",
+]
 
 #: Picks nearest the fault that extend a horizon to it (common practice, no source).
 CUTOFF_PICKS = 8
@@ -133,7 +139,7 @@ def extend_to_fault(picks, fault, wall, where):
     x, z = picks.x[near], picks.z[near]
     sigma = np.maximum(picks.sigma[near], 1e-3)
     end = x[0] if wall == "hanging wall" else x[-1]
-    curve, variance = _local_fit(x, z, sigma, end, fault)
+    curve, variance = local_curve(x, z, sigma, end, fault)
     span = max(np.ptp(picks.x), abs(float(fault.x_at(z.mean())) - end)) + 1.0
     low, high = (
         (end - 2 * span, end + span)
@@ -168,8 +174,23 @@ def extend_to_fault(picks, fault, wall, where):
     return cut, float(reach)
 
 
-def _local_fit(x, z, sigma, end, fault):
-    """Line or parabola through the picks nearest the fault, and its variance."""
+def local_curve(x, z, sigma, end, fault):
+    """Fit a line or parabola to the picks nearest a fault; the curve and its variance.
+
+    Parameters
+    ----------
+    x, z, sigma : ndarray (n,)
+        The picks.
+    end : float
+        x of the one nearest the fault.
+    fault : object
+        Has ``x_at(z)``.
+
+    Returns
+    -------
+    curve, variance : callable
+        Of x.
+    """
     d = x - end
     scale = max(np.ptp(d), 1e-9)
     best = None

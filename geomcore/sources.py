@@ -27,8 +27,8 @@ __all__ = [
 
 #: What a layer can be. ``fault trace`` is the fault at the surface, ``fault`` the
 #: fault at depth (points or lines), ``cut-off`` the lines or gap polygons where a
-#: horizon meets the fault.
-ROLES = ("horizon", "fault trace", "fault", "cut-off")
+#: horizon meets the fault, ``subsidiary fault`` another fault in the hanging wall.
+ROLES = ("horizon", "fault trace", "fault", "cut-off", "subsidiary fault")
 Z_FROM = ("geometry", "field", "raster", "constant")
 SIGNS = ("elevation", "depth")
 DOMAINS = ("depth", "time")

@@ -43,7 +43,9 @@ def march(origin_index, origin_fraction, start, increment, step=None):
     Notes
     -----
     A node can be solved when its origin lies on the solved part, so a whole strip
-    is solved in one step.
+    is solved in one step. Where it lies between the last solved node and itself (a
+    shadow wider than the heave, with no nodes in it), F is straight between the two
+    by assumption and F[i] = F[i - 1] + increment[i]/(1 - fraction).
     """
     n = len(origin_index)
     fault = np.empty((n, *np.shape(increment)[1:]))
@@ -54,6 +56,11 @@ def march(origin_index, origin_fraction, start, increment, step=None):
         waits = needed[done:] >= done
         first = int(waits.argmax())
         stop = done + first if waits[first] else n
+        if stop == done and step is None and origin_index[done] == done - 1:
+            rise = increment[done] / (1.0 - origin_fraction[done])
+            fault[done] = fault[done - 1] + rise
+            done += 1
+            continue
         if stop == done:
             raise ConstructionError(
                 "no-progress", "a column has not moved: its origin lies beyond itself."

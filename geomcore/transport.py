@@ -158,7 +158,7 @@ def _lower_side(picks, horizon, spec):
     Each block's level is carried straight to the fault, so that a regional dip is not
     taken for a throw.
     """
-    marks = np.r_[picks.of("fault").x, picks.of("cutoff").x]
+    marks = np.r_[picks.of("fault", wall="").x, picks.of("cutoff").x]
     bed = picks.of("horizon", horizon)
     if not len(marks) or not len(bed):
         return 0.0

@@ -17,6 +17,8 @@ __all__ = [
     "parameter_roots",
 ]
 
+_ADDED = "added_heave_"
+
 
 @dataclass(frozen=True, eq=False)
 class ErrorColumns:
@@ -137,6 +139,9 @@ def _single_errors(problem):
         ("footwall_x", 0.0 if foot.slides else foot.sigma_x, "cut-offs"),
         ("angle", problem.options.shear_angle_sigma, "shear angle"),
     ]
+    for i, fault in enumerate(problem.subsidiaries):
+        sigma = fault.added_sigma(problem.tan)
+        found.append((f"{_ADDED}{i}", sigma, "cut-offs"))
     return [f for f in found if f[1] > 0]
 
 
@@ -204,9 +209,12 @@ def moved_problem(problem, name, step):
     name : str
         ``level`` or ``slope`` of the regional, ``footwall_x``, ``hanging_wall_x``,
         ``hanging_wall_z``, ``footwall_on_regional``, ``hanging_wall_on_bed`` (along
-        the horizon, by dx) or ``angle``.
+        the horizon, by dx), ``angle``, or ``added_heave_`` and the number of a
+        subsidiary fault.
     step : float
     """
+    if name.startswith(_ADDED):
+        return _moved_subsidiary(problem, int(name[len(_ADDED) :]), step)
     if name == "angle":
         angle = problem.model.shear_angle + step
         return replace(problem, model=replace(problem.model, shear_angle=angle))
@@ -215,6 +223,17 @@ def moved_problem(problem, name, step):
     if name in ("level", "footwall_x", "footwall_on_regional"):
         return _moved_footwall(problem, name, step)
     return _moved_hanging_wall(problem, name, step)
+
+
+def _moved_subsidiary(problem, i, step):
+    """Change what a subsidiary fault adds: its outboard cut-off slides along it."""
+    faults = list(problem.subsidiaries)
+    across = faults[i].plane.run - problem.tan
+    dz = step / across
+    cut = faults[i].outboard
+    moved = replace(cut, x=cut.x + faults[i].plane.run * dz, z=cut.z + dz)
+    faults[i] = replace(faults[i], outboard=moved)
+    return replace(problem, subsidiaries=tuple(faults))
 
 
 def _moved_footwall(problem, name, step):

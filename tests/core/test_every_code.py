@@ -38,6 +38,7 @@ MODULES = (
     "sources",
     "stepping",
     "study",
+    "subsidiary",
     "transport",
     "units",
     "walls",
