@@ -203,7 +203,9 @@ def tracked_gap(x, z, fault):
     side = x > fault.x_at(z)
     if len(x) < 8 or side.all() or not side.any():
         return inside
-    slope = np.diff(z) / np.diff(x)
+    apart = np.diff(x)
+    # samples at one place have no slope between them
+    slope = np.diff(z) / np.where(apart > 0, apart, np.inf)
     usual = np.median(slope)
     excess = usual - slope
     scatter = max(1.4826 * np.median(np.abs(excess)), 1e-3)

@@ -240,3 +240,12 @@ def test_known_fault_outranks_the_gap_for_the_walls():
     picks = assign_walls(table(x, z, source="grid"), PLANE)
     kept = leave_out_near_fault(picks, PLANE, 0.0, ["grid"])
     assert kept.wall.tolist() == picks.wall.tolist()
+
+
+def test_samples_at_one_place_hide_no_gap():
+    """Two tracked points at one x are no step; the gap is found all the same."""
+    x, z, inside = surface()
+    twice = np.sort(np.r_[np.arange(len(x)), np.arange(0, len(x), 7)])
+    found = tracked_gap(x[twice], z[twice], PLANE)
+    assert found[inside[twice]].all()
+    assert found[~inside[twice]].sum() <= 4
