@@ -95,7 +95,8 @@ def _of_offsets(problem, solution):
     """Point out steps of the bed where no fault is picked; shadows are not judged."""
     bed, separation, cuts = problem.bed, problem.separation, []
     if solution.blocks is not None:
-        blocks, u = solution.blocks, bed.x - bed.z * problem.tan
+        # picks at the edge of a shadow belong to its steep side
+        blocks, u = solution.blocks.widened(0.1), bed.x - bed.z * problem.tan
         for fault, low, high in zip(blocks.faults, blocks.start, blocks.end):
             inside = bed.x[(u >= low) & (u <= high)]
             x = np.r_[inside, fault.inboard.x, fault.outboard.x]

@@ -5,9 +5,9 @@ import numpy as np
 from .compaction import check_compaction, check_surfaces
 from .errors import ConstructionError
 from .kinematics import ConstantHeave, from_shear_frame, to_shear_frame
-from .profile import Profile
+from .profile import Profile, pool_to_increasing
 
-__all__ = ["forward_horizon", "predict_horizon"]
+__all__ = ["forward_horizon", "forward_past_subsidiaries", "predict_horizon"]
 
 
 def predict_horizon(
@@ -107,6 +107,68 @@ def forward_horizon(
         (float(u_foot + foot_z * tan), foot_z),
         (float(x[0]), float(z[0])),
     )
+
+
+def forward_past_subsidiaries(
+    trace_x, trace_z, regional, displacement, model, shares, compaction=None
+):
+    """Predict a horizon that subsidiary faults cut as they cut the one used.
+
+    Parameters
+    ----------
+    trace_x, trace_z, regional, displacement, model, compaction
+        As for `forward_horizon`, the displacement that of the block at the master.
+    shares : sequence of SubsidiaryShare
+        From the master outwards; what each adds is taken as the same for the horizon.
+
+    Returns
+    -------
+    horizon : Profile
+        Each block as far as it sees the master, straight from one to the next.
+    footwall, hanging_wall : tuple (x, z)
+    hidden : list of tuple (u, u)
+        Along the shear lines, where it does not see the master: nothing is predicted.
+
+    Raises
+    ------
+    ConstructionError
+        As `forward_horizon`.
+    """
+    angle, moved = model.shear_angle, displacement
+    arguments = (trace_x, trace_z, regional)
+    bed, foot, hang = forward_horizon(*arguments, moved, model, compaction=compaction)
+    pieces, edges = [np.column_stack([bed.x, bed.z])], []
+    for share in shares:
+        moved += share.added_heave
+        outer, _, _ = forward_horizon(*arguments, moved, model, compaction=compaction)
+        outer = np.column_stack([outer.x, outer.z])
+        edge = _shadow_edges(pieces[-1], outer, share, angle)
+        if edge is None:
+            moved -= share.added_heave
+            continue
+        start, end = edge
+        edges.append(edge)
+        pieces[-1] = pieces[-1][to_shear_frame(*pieces[-1].T, angle) <= start]
+        pieces.append(outer[to_shear_frame(*outer.T, angle) >= end])
+    x, z, _ = pool_to_increasing(*np.vstack(pieces).T, least=1e-9)
+    return Profile(x, z, np.zeros(len(x))), foot, hang, edges
+
+
+def _shadow_edges(inner, outer, share, angle):
+    """Give u between which a horizon does not see the master; None if it is not cut."""
+    plane, added = share.fault.plane, share.added_heave
+    branch = float(to_shear_frame(*share.branch, angle))
+    inwards = plane.run > np.tan(np.radians(angle))
+    bed = outer if inwards else inner
+    beyond = bed[:, 0] - plane.x_at(bed[:, 1])
+    hit = np.flatnonzero((beyond[:-1] < 0) & (beyond[1:] >= 0))
+    if not len(hit):
+        return None
+    i = int(hit[0])
+    f = beyond[i] / (beyond[i] - beyond[i + 1])
+    at = float(to_shear_frame(*(bed[i] + f * (bed[i + 1] - bed[i])), angle))
+    start, end = (branch - added, at) if inwards else (at, branch + added)
+    return (start, end) if start < end else None
 
 
 def _regional_meets_fault(fu, gap):

@@ -25,8 +25,14 @@ from .cutoffs import (
 from .digest import digest
 from .errors import Doubt, FrameError, GeomcoreError, StudyError, Unsolved
 from .fault import known_fault
-from .forward import forward_horizon
-from .kinematics import ConstantBedLength, ConstantHeave, model_named, tan_of
+from .forward import forward_past_subsidiaries
+from .kinematics import (
+    ConstantBedLength,
+    ConstantHeave,
+    model_named,
+    tan_of,
+    to_shear_frame,
+)
 from .picks import Picks, PullOptions, SourceCount, prepare_source, pull_source
 from .problem import OtherHorizon
 from .profile import (
@@ -133,6 +139,8 @@ class GivenTrace:
         That of the construction; further horizons compact with it.
     model : object, optional
         Kinematic model that made it; constant heave if not given.
+    subsidiaries : tuple of SubsidiaryShare
+        Subsidiary faults, which cut further horizons too.
     """
 
     x: np.ndarray
@@ -143,6 +151,7 @@ class GivenTrace:
     shear_angle: float
     compaction: object = None
     model: object = None
+    subsidiaries: tuple = ()
 
     @classmethod
     def of(cls, prediction):
@@ -156,6 +165,7 @@ class GivenTrace:
             prediction.model.shear_angle,
             prediction.compaction,
             prediction.model,
+            prediction.subsidiaries,
         )
 
 
@@ -827,16 +837,20 @@ def horizon_from_trace(spec, picks, given):
             f"horizon {spec.name}",
             "Use constant heave or constant slip.",
         )
-    profile, foot, hang = forward_horizon(
+    profile, foot, hang, hidden = forward_past_subsidiaries(
         given.x,
         given.z,
         regional,
         given.oblique_heave,
         model,
-        compaction=given.compaction,
+        given.subsidiaries,
+        given.compaction,
     )
     bed = profile_from_picks(picks.of("horizon", spec.name, "hanging wall"))
     miss = bed.z - profile(bed.x)
+    u = to_shear_frame(bed.x, bed.z, model.shear_angle)
+    for start, end in hidden:
+        miss[(u > start) & (u < end)] = np.nan
     miss = miss[np.isfinite(miss)]
     if spec.name == given.horizon:
         note, miss = "the horizon made the fault: its misfit is an identity", miss[:0]

@@ -6,7 +6,7 @@ import numpy as np
 import oracles
 import pytest
 from oracles import foot_of_shear_line
-from worlds import World, frame_for, joined, table
+from worlds import World, frame_for, joined, study_for, table
 
 from geomcore.construction import predict_fault
 from geomcore.errors import ConstructionError
@@ -15,10 +15,13 @@ from geomcore.kinematics import ConstantHeave, ConstantSlip
 from geomcore.offsets import unpicked_offsets
 from geomcore.profile import Profile, line_through
 from geomcore.separation import CutOff, Separation
+from geomcore.sources import Features
+from geomcore.study import SectionLine, Study, run
 from geomcore.subsidiary import (
     SubsidiaryFault,
     SubsidiaryPlane,
     blocks_under,
+    leave_out_near_subsidiaries,
     measure_subsidiaries,
     subsidiary_planes,
 )
@@ -62,19 +65,21 @@ class TwoFaults:
         drop = self.master(v) - self.master(u) if rides else 0.0
         return self.plane(u) + drop if rides else self.master(v)
 
-    def moved(self, u):
-        outboard = u > self.top if self.inwards else u >= self.top
+    def moved(self, u, level=LEVEL):
+        share = (level - self.deep) / (LEVEL - self.deep)
+        top = self.branch + share * (self.top - self.branch)
+        outboard = u > top if self.inwards else u >= top
         v = u + self.h1 + (self.h2 if outboard else 0.0)
-        low, high = sorted((self.branch, self.top))
-        if low < u < high or (u == self.top):
-            z = LEVEL + self.plane_now(v) - self.plane(u)
+        low, high = sorted((self.branch, top))
+        if low < u < high or u == top:
+            z = level + self.plane_now(v) - self.plane(u)
         else:
-            z = LEVEL + self.master(v) - self.master(u)
+            z = level + self.master(v) - self.master(u)
         return v + z * self.t, z
 
-    def bed(self, step, reach=9000.0):
+    def bed(self, step, reach=9000.0, level=LEVEL):
         u = np.arange(self.u0 + step, reach - self.h1, step)
-        return np.array([self.moved(v) for v in u])
+        return np.array([self.moved(v, level) for v in u])
 
     def picks_of_plane(self, count=5):
         """Points of the moved plane from the branch point up to the horizon."""
@@ -82,6 +87,10 @@ class TwoFaults:
         v = np.linspace(self.branch, self.top, count) + moved_by
         z = np.array([self.plane_now(w) for w in v])
         return np.column_stack([v + z * self.t, z])
+
+    def fault_x(self, z):
+        x = np.linspace(-2000.0, 12000.0, 4000)
+        return np.interp(-z, -self.truth(x), x)
 
     def truth(self, x):
         return np.array([self.fault.z(v) for v in x])
@@ -184,8 +193,8 @@ def test_added_heave_is_that_of_the_particles(case):
     truth = ground(case)
     (fault,), _ = measure_subsidiaries(inputs_of(truth)[1], "A")
     assert fault.added_heave(truth.t) == pytest.approx(150.0, abs=2.0)
-    run = (truth.top - truth.branch) / (LEVEL - truth.deep) + truth.t
-    assert fault.plane.sense == ("antithetic" if run > 0 else "synthetic")
+    slant = (truth.top - truth.branch) / (LEVEL - truth.deep) + truth.t
+    assert fault.plane.sense == ("antithetic" if slant > 0 else "synthetic")
     assert fault.heave > 0
     assert fault.throw > 0
 
@@ -346,16 +355,16 @@ def test_wide_shadow_is_doubted_and_a_wider_one_ends_the_march():
 
 def codes_with(plane_angle, shear):
     """Doubts of a construction with a subsidiary fault at an angle."""
-    run = math.tan(math.radians(plane_angle))
+    slant = math.tan(math.radians(plane_angle))
     truth = ground((0.0, 2200.0, 2700.0))
     inputs, _ = inputs_of(truth)
     inputs["model"] = ConstantHeave(shear)
     x, z = 3500.0, float(inputs["bed"](3500.0))
-    plane = SubsidiaryPlane("B", x, z, run)
-    down = math.copysign(40.0, run)
+    plane = SubsidiaryPlane("B", x, z, slant)
+    down = math.copysign(40.0, slant)
     cuts = (
-        CutOff("a", x - abs(run) * 40, z - down),
-        CutOff("b", x + abs(run) * 40, z + down),
+        CutOff("a", x - abs(slant) * 40, z - down),
+        CutOff("b", x + abs(slant) * 40, z + down),
     )
     fault = SubsidiaryFault(plane, *cuts)
     prediction = predict_fault(**inputs, subsidiaries=(fault,))
@@ -431,6 +440,96 @@ def test_fault_picks_of_a_subsidiary_fault_do_not_make_the_master():
     assert fault.x.tolist() == [100.0, 400.0]
     assert not len(fault.tie_x)
     assert doubts == []
+
+
+# ---- the whole way from map layers -----------------------------------------------
+
+#: x of the world on the drawn line.
+START = -3000.0
+OLDER = -900.0
+
+
+def study_of(truth, **construction):
+    """A study with a layer of subsidiary faults and an older horizon."""
+    document = study_for(World(angle=truth.angle), **construction).to_dict()
+    common = document["sources"][1]
+    document["sources"] += [
+        {**common, "key": "minor", "role": "subsidiary fault", "name": "B"},
+        {**common, "key": "older", "role": "horizon", "name": "Older"},
+    ]
+    document["construction"]["further_horizons"] = [{"name": "Older"}]
+    return Study.from_dict(document)
+
+
+def layers_of(truth):
+    """Point layers of a hanging wall cut by a subsidiary fault, and the trace."""
+    place = World().place
+    foot, hang = truth.footwall, truth.hanging_wall
+    x = np.linspace(0.0, hang[0], 40)[1:]
+    before = np.arange(foot[0] - 2500.0, foot[0] - 20.0, 60.0)
+
+    def points(rows):
+        return Features.points(place.at(rows[:, 0]), rows[:, 1])
+
+    def horizon(level):
+        bed = truth.bed(25.0, level=level)
+        deep = bed[bed[:, 0] > truth.fault_x(bed[:, 1]) + 1.0]
+        return points(np.vstack([np.column_stack([before, 0 * before + level]), deep]))
+
+    trace = place.at(np.zeros(3), np.array([9000.0, 0.0, -9000.0]))
+    return {
+        "trace": Features.lines([np.column_stack([trace, np.zeros(3)])]),
+        "deep": points(np.column_stack([x, truth.truth(x)])),
+        "tops": horizon(LEVEL),
+        "minor": points(truth.picks_of_plane()),
+        "older": horizon(OLDER),
+    }
+
+
+@pytest.mark.parametrize("solver", ["march", "fit"])
+@pytest.mark.parametrize("case", list(CASES.values())[:3], ids=list(CASES)[:3])
+def test_section_with_picks_of_a_subsidiary_fault_just_works(case, solver):
+    """A layer declared 'subsidiary fault' is all that has to be given."""
+    truth = ground(case)
+    line = SectionLine("S1", World().place.at([START, 9000.0]))
+    layers = layers_of(truth)
+    (section,) = run(study_of(truth, solver=solver), layers, [line]).sections
+    prediction = section.prediction
+    assert prediction
+    assert [p.fault.plane.name for p in prediction.subsidiaries] == ["B"]
+    assert prediction.subsidiaries[0].share == pytest.approx(150 / 850, abs=0.004)
+    marks = section.picks.of("fault", "B")
+    assert set(marks.wall) == {"hanging wall"}
+    assert len(section.fault.x) == 40 + (0 in section.fault.x)
+    error = prediction.trace.z - truth.truth(prediction.trace.x + START)
+    assert np.abs(error).max() < 35.0
+    # a horizon not used for the fault, outboard and inboard of the shadow
+    (older,) = section.horizons
+    assert older.misfit_n > 100
+    assert older.misfit_rms < 1.0
+    assert "unpicked-offset" not in [d.code for d in section.all_doubts]
+
+
+@pytest.mark.parametrize("run_of_plane", [0.6, -0.6])
+def test_values_a_grid_draws_across_a_subsidiary_fault_are_left_out(run_of_plane):
+    """A grid has no gap: what it draws from one block to the other is no horizon."""
+    rise = math.copysign(200.0, run_of_plane)
+    low, high = 3000.0, 3120.0
+    x = np.arange(1500.0, 5000.0, 20.0)
+    z = np.interp(x, [low, high], [-900.0, -900.0 + rise])
+    bed = table(x, z + 0.02 * (x - 3000.0), wall="hanging wall", sigma=1.0, source="g")
+    ends = np.array([z[0], z[-1]])
+    marks = table([low, high], ends, kind="fault", name="B", wall="hanging wall")
+    picks = leave_out_near_subsidiaries(joined(bed, marks), 0.0, ["g"])
+    lost = picks.x[~picks.used]
+    assert lost.min() > low - 1.0
+    assert lost.max() < high + 1.0
+    assert set(picks.reason[~picks.used]) == {"tracked across a subsidiary fault"}
+    ((fault,), doubts) = measure_subsidiaries(picks, "A")
+    assert doubts == []
+    assert fault.heave == pytest.approx(120.0, abs=4.0)
+    near = leave_out_near_subsidiaries(joined(bed, marks), 100.0)
+    assert set(near.reason[~near.used]) == {"within 100 of the subsidiary fault"}
 
 
 # ---- offsets nobody picked ----------------------------------------------------------
