@@ -17,12 +17,15 @@ __all__ = [
     "Key",
     "KeyEntry",
     "TextRuler",
+    "TextTable",
     "clean",
     "draw_block",
     "draw_key",
+    "draw_table",
     "layout_key",
     "nearest_of_box",
     "text_block",
+    "text_table",
 ]
 
 #: Distance of lines of text over the size of the type.
@@ -285,6 +288,82 @@ def _draw_sample(page, entry, x, y):
         page.plot([x + 0.5 * HANDLE], [y], gid=entry.gid, **look)
     else:
         page.plot(x + ends, [y, y], gid=entry.gid, **look)
+
+
+@dataclass(frozen=True)
+class TextTable:
+    """A table laid out on the page; its first row is the head.
+
+    Parameters
+    ----------
+    gid : str
+    lines : tuple of tuple (look, cells)
+        A row each: properties of the line drawn before it, or None, and the lines of
+        words of each cell.
+    places : tuple of float
+        Left edge of each column in points.
+    size : float
+    """
+
+    gid: str
+    lines: tuple
+    places: tuple
+    size: float
+
+    @property
+    def height(self):
+        """Height in points."""
+        return sum(_row_lines(cells) for _, cells in self.lines) * self.size * LEADING
+
+
+def _row_lines(cells):
+    return max(len(lines) for lines in cells)
+
+
+def text_table(ruler, gid, rows, size, width):
+    """Lay out a table; the last cell of each row wraps in what room is left.
+
+    Parameters
+    ----------
+    ruler : TextRuler
+    gid : str
+    rows : sequence of tuple (look, cells)
+        Head first; cells are texts. The last one of a row with fewer cells than the
+        head takes the rest of the width.
+    size, width : float
+        Size of the type and width of the page in points.
+
+    Returns
+    -------
+    TextTable
+    """
+    steps = []
+    for j in range(len(rows[0][1]) - 1):
+        texts = [cells[j] for _, cells in rows if j < len(cells) - 1]
+        steps.append(max(ruler.width(t, size, "bold") for t in texts) + COLUMN_GAP)
+    places = HANDLE + HANDLE_GAP + np.r_[0.0, np.cumsum(steps)]
+
+    def laid(cells):
+        rest = max(width - places[len(cells) - 1], 60.0)
+        return (*((text,) for text in cells[:-1]), ruler.wrap(cells[-1], size, rest))
+
+    lines = tuple((look, laid(cells)) for look, cells in rows)
+    return TextTable(gid, lines, tuple(places), size)
+
+
+def draw_table(page, ruler, table, x, top):
+    """Draw a table below `top`; gives the height where the next block may start."""
+    step, y = table.size * LEADING, top
+    for i, (look, cells) in enumerate(table.lines):
+        if look:
+            entry = KeyEntry(f"{table.gid}-sample-{i}", "", look)
+            _draw_sample(page, entry, x, y - 0.5 * step)
+        for j, (place, lines) in enumerate(zip(table.places, cells)):
+            gid, weight = f"{table.gid}-{i}-{j}", "normal" if i else "bold"
+            words = Block(gid, tuple(lines), table.size, weight)
+            draw_block(page, ruler, words, x + place, y)
+        y -= _row_lines(cells) * step
+    return top - table.height
 
 
 class FreePlaces:

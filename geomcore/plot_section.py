@@ -186,13 +186,16 @@ class Drawing:
         return float(x.min()), float(x.max()), float(z.min()), float(z.max())
 
 
-def draw_section(axes, view):
+def draw_section(axes, view, faults=None):
     """Draw everything of a section that does not depend on the size of the frame.
 
     Parameters
     ----------
     axes : matplotlib Axes
     view : SectionView
+    faults : callable, optional
+        ``faults(drawing)`` draws other faults instead of the section's own, and
+        nothing that follows from it.
 
     Returns
     -------
@@ -202,10 +205,11 @@ def draw_section(axes, view):
     _draw_picks(drawing)
     _draw_beds(drawing)
     _draw_regional(drawing)
-    _draw_further(drawing)
-    _draw_fault(drawing)
+    for draw in (_draw_further, _draw_fault) if faults is None else (faults,):
+        draw(drawing)
     _draw_cutoffs(drawing)
-    _draw_shear_planes(drawing)
+    if faults is None:
+        _draw_shear_planes(drawing)
     _draw_section_line(drawing)
     _draw_datum(drawing)
     return drawing
@@ -586,7 +590,7 @@ class _Frame:
         return (np.asarray(x) - x0) * self.scale_x, (np.asarray(z) - z0) * self.scale_z
 
 
-def annotate(drawing, ruler, width, height):
+def annotate(drawing, ruler, width, height, labels=None):
     """Draw dimensions, bends and labels once the frame has its size.
 
     Parameters
@@ -596,6 +600,8 @@ def annotate(drawing, ruler, width, height):
     ruler : TextRuler
     width, height : float
         Size of the frame in points.
+    labels : sequence of tuple (gid, text, x, z), optional
+        To be set near these places instead of dimensions and the fault's end.
 
     Notes
     -----
@@ -608,7 +614,11 @@ def annotate(drawing, ruler, width, height):
         frame.free.take_path(*frame.points(x, z))
     for x, z in drawing.marks:
         frame.free.take_points(*frame.points(x, z))
-    for label in (*_dimensions(frame), *_end_of_fault(frame)):
+    if labels is None:
+        wanted = [*_dimensions(frame), *_end_of_fault(frame)]
+    else:
+        wanted = [(gid, text, frame.points(x, z)) for gid, text, x, z in labels]
+    for label in wanted:
         _place_label(frame, *label)
     if not drawing.marks:
         middle = 0.5 * width, 0.5 * height

@@ -15,9 +15,11 @@ from .errors import GeomcoreError
 from .plot_page import (
     FAMILY,
     TextRuler,
+    TextTable,
     clean,
     draw_block,
     draw_key,
+    draw_table,
     layout_key,
     text_block,
 )
@@ -40,6 +42,8 @@ from .units import LENGTH_UNITS
 __all__ = [
     "FORMATS",
     "FigureOptions",
+    "Page",
+    "page_figure",
     "save_section_figure",
     "section_figure",
 ]
@@ -155,21 +159,62 @@ def section_figure(study, section_result, options=None):
     GeomcoreError
         If matplotlib is missing (code ``no-matplotlib``).
     """
-    matplotlib = _matplotlib()
     options = options or FigureOptions()
     ve = options.vertical_exaggeration
+    _matplotlib()
     view = view_of(study, section_result, options.domain, ve)
+    return page_figure(view, options)
+
+
+@dataclass(frozen=True)
+class Page:
+    """What stands on a page; a section figure unless said otherwise.
+
+    Parameters
+    ----------
+    faults : callable, optional
+        As for `draw_section`.
+    labels : sequence, optional
+        As for `annotate`.
+    title : str
+        Added to the title.
+    above, below : callable, optional
+        ``above(block)`` and ``below(block, ruler, width)`` give the blocks between
+        title and frame, and those between key and cautions.
+    """
+
+    faults: object = None
+    labels: object = None
+    title: str = ""
+    above: object = None
+    below: object = None
+
+
+def page_figure(view, options, page=None):
+    """Put a section on a page at a round scale.
+
+    Parameters
+    ----------
+    view : SectionView
+    options : FigureOptions
+    page : Page, optional
+
+    Returns
+    -------
+    matplotlib.figure.Figure
+    """
+    matplotlib, page = _matplotlib(), page or Page()
     with matplotlib.rc_context():
         matplotlib.rcdefaults()
         matplotlib.rcParams.update(_SETTINGS)
         figure = matplotlib.figure.Figure(facecolor="white")
-        figure.set_label(title_words(view))
+        figure.set_label(title_words(view) + page.title)
         axes = figure.add_axes((0.1, 0.1, 0.8, 0.8), gid="section")
-        drawing = draw_section(axes, view)
+        drawing = draw_section(axes, view, page.faults)
         ruler = TextRuler(_all_names(view, options))
-        texts = _texts(view, options, ruler, drawing.key)
+        texts = _texts(view, options, ruler, drawing.key, page)
         frame = _size_frame(view, drawing.extent, options, texts)
-        _compose(figure, drawing, ruler, texts, frame, options)
+        _compose(figure, drawing, ruler, texts, frame, options, page.labels)
     return figure
 
 
@@ -199,7 +244,7 @@ class _Texts:
         return sum(b.height for b in (*self.above, *below)) + GAP * (len(below) + 1)
 
 
-def _texts(view, options, ruler, entries):
+def _texts(view, options, ruler, entries, page):
     width = options.width * POINT - 2 * MARGIN
 
     def block(gid, text, size=TEXT, **look):
@@ -208,14 +253,16 @@ def _texts(view, options, ruler, entries):
     loud, quiet = {"colour": WARNING_COLOUR}, {"colour": QUIET_COLOUR}
     warnings = warning_words(view, options.doubts)
     run = run_words(view, options.run_id, options.made_with)
+    method = (block("method", method_words(view)),)
+    notes = (block("notes", note_words(view), SMALL),)
     above = (
-        block("title", title_words(view), TITLE, weight="bold"),
+        block("title", title_words(view) + page.title, TITLE, weight="bold"),
         block("status", status_words(view), weight="bold", **loud),
-        block("method", method_words(view)),
+        *(page.above(block) if page.above else method),
         block("line", line_words(view)),
     )
     below = (
-        block("notes", note_words(view), SMALL),
+        *(page.below(block, ruler, width) if page.below else notes),
         block("warnings", warnings, SMALL, **loud),
         block("caution", caution_words(view), SMALL, style="italic"),
         block("run", run, SMALL, **quiet),
@@ -274,7 +321,7 @@ def _round_ratio(least):
     return float(next(m for m in _MANTISSAS if m * power >= least * (1 - 1e-9)) * power)
 
 
-def _compose(figure, drawing, ruler, texts, frame, options):
+def _compose(figure, drawing, ruler, texts, frame, options, labels):
     """Put words, frame and key on the page, from the top down."""
     view, wide = drawing.view, options.width * POINT
     words = scale_words(view, frame.ratio, options.width * 25.4)
@@ -292,12 +339,13 @@ def _compose(figure, drawing, ruler, texts, frame, options):
     box = (left / wide, y / high, frame.width / wide, frame.height / high)
     _dress_axes(drawing.axes, view, frame, box, ruler)
     _draw_ends(page, view, ruler, (left, left + frame.width), y + frame.height)
-    annotate(drawing, ruler, frame.width, frame.height)
+    annotate(drawing, ruler, frame.width, frame.height, labels)
     y = draw_block(page, ruler, scale, MARGIN, y - AXIS_BELOW)
     if texts.key.height:
         y = draw_key(page, ruler, texts.key, MARGIN, y - GAP)
     for block in (b for b in texts.below if b.lines):
-        y = draw_block(page, ruler, block, MARGIN, y - GAP)
+        draw = draw_table if isinstance(block, TextTable) else draw_block
+        y = draw(page, ruler, block, MARGIN, y - GAP)
 
 
 def _page(figure, wide, high):

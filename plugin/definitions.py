@@ -619,8 +619,8 @@ _DECLARED = (
         "PLOTS",
         "folder",
         "Folder for section plots",
-        "One figure per section as PNG, SVG and PDF. Needs matplotlib. None if not "
-        "given.",
+        "One figure per section as PNG, SVG and PDF, and one of its comparison where "
+        "that is asked for. Needs matplotlib. None if not given.",
         optional=True,
     ),
     Parameter(

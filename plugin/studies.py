@@ -407,7 +407,7 @@ def temporary_folder():
 
 
 def draw_plots(run, folder, steps):
-    """Draw one figure per section into a folder.
+    """Draw one figure per section into a folder, and one of each comparison.
 
     Parameters
     ----------
@@ -421,6 +421,7 @@ def draw_plots(run, folder, steps):
         Number of sections drawn.
     """
     from ..geomcore import __version__
+    from ..geomcore.plot_comparison import comparison_figure
     from ..geomcore.plots import FigureOptions, save_section_figure, section_figure
 
     options = FigureOptions.of_run(run, made_with=f"Heaveline {__version__}")
@@ -429,6 +430,10 @@ def draw_plots(run, folder, steps):
         steps.check()
         figure = section_figure(run.study, section, options)
         save_section_figure(figure, folder / name, PLOT_FORMATS)
+        if section.comparison:
+            figure = comparison_figure(run.study, section, options)
+            other = f"comparison{name[len('section') :]}"
+            save_section_figure(figure, folder / other, PLOT_FORMATS)
         steps.progress((i + 1) / len(run.sections))
     return len(run.sections)
 

@@ -20,8 +20,9 @@ from worlds import (
 
 from geomcore.comparing import candidates_of
 from geomcore.comparison import straight_fault_test
-from geomcore.errors import ConstructionError, StudyError
+from geomcore.errors import ConstructionError, GeomcoreError, StudyError
 from geomcore.kinematics import MODELS, ConstantSlip
+from geomcore.plot_comparison import comparison_figure
 from geomcore.problem import MarchOptions, Problem, bed_from
 from geomcore.profile import profile_from_picks
 from geomcore.study import Study, run
@@ -332,3 +333,100 @@ def test_the_straight_fault_test_is_for_constant_heave_only(listric):
     with pytest.raises(ConstructionError) as caught:
         straight_fault_test(replace(problem, model=ConstantSlip()))
     assert caught.value.code == "straight-model"
+
+
+# --- the figure ----------------------------------------------------------------------
+
+
+def texts_of(figure):
+    """Every text of a figure by its group id."""
+    return {t.get_gid(): t.get_text() for a in figure.axes for t in a.texts}
+
+
+def lines_of(figure):
+    """Lines of a figure by their group id."""
+    return {line.get_gid(): line for a in figure.axes for line in a.lines}
+
+
+def test_figure_shows_every_fault_and_numbers_it(listric):
+    """Each lies where it was constructed, the straight one through the cut-offs."""
+    study = study_for(World(EXPONENTIAL), 5.0, compare=EVERY_MODEL)
+    figure = comparison_figure(study, listric)
+    lines, texts = lines_of(figure), texts_of(figure)
+    for i, row in enumerate(listric.comparison.rows):
+        drawn = lines[f"construction-{i + 1}"]
+        assert np.array_equal(drawn.get_xdata(), row.prediction.trace.x)
+        assert np.array_equal(drawn.get_ydata(), row.prediction.trace.z)
+        assert texts[f"construction-{i + 1}-label"] == str(i + 1)
+        sample = lines[f"comparison-sample-{i + 1}"]
+        assert sample.get_color() == drawn.get_color()
+    straight = lines["straight-fault"]
+    z = listric.comparison.straight.z_at(straight.get_xdata())
+    assert straight.get_ydata() == pytest.approx(z)
+    assert len({lines[f"construction-{i}"].get_color() for i in range(1, 6)}) == 5
+    assert "fault-predicted" not in lines
+
+
+def test_figure_has_the_table_under_it(listric):
+    """Method, solver, heave, throw, detachment and misfit, as in the results."""
+    study = study_for(World(EXPONENTIAL), 5.0, compare=EVERY_MODEL)
+    texts = texts_of(comparison_figure(study, listric))
+    table = [
+        [texts.get(f"comparison-{i}-{j}-1", "") for j in range(8)] for i in range(7)
+    ]
+    assert table[0][1:] == [
+        "Method",
+        "Solver",
+        "Heave",
+        "Throw",
+        "Detachment",
+        "Misfit",
+        "Remark",
+    ]
+    own = listric.prediction
+    assert table[1][:3] == ["1", "constant heave (vertical shear)", "march"]
+    assert table[1][3] == f"{own.separation.heave:.0f}\N{NO-BREAK SPACE}m"
+    assert table[1][5].endswith("or deeper")
+    assert f"{-own.deepest_z:.0f}" in table[1][5]
+    assert table[1][7] == "the section's own"
+    misfit = listric.comparison.rows[1].misfit_rms
+    assert table[2][6] == f"{misfit:.1f} sigma rms"
+    assert table[6][:2] == ["S", "straight fault, 51°"]
+    assert table[6][7] == "verdict: curved"
+    assert texts["caution-1"].startswith("A model, not an observation")
+    assert texts["title-1"].endswith("constructions compared")
+
+
+def test_figure_gives_the_reason_of_what_has_no_solution():
+    """In the table, without a line; the frame shows what there is."""
+    compaction = {"law": "shale", "surface_now_z": 0.0, "surface_then_z": 0.0}
+    world = World(EXPONENTIAL, reach=9000.0)
+    section = compared(world, compaction=compaction)
+    study = study_for(world, 5.0, compare=EVERY_MODEL, compaction=compaction)
+    figure = comparison_figure(study, section)
+    assert "construction-4" not in lines_of(figure)
+    texts = texts_of(figure)
+    assert texts["comparison-4-3-1"].startswith("not solved: compaction goes with")
+    assert "section S1" not in texts["comparison-4-3-1"]
+
+
+def test_figure_of_a_section_without_any_solution_is_drawn():
+    """Nothing to draw but the picks: every row has its reason."""
+    document = changed(DOCUMENT, "construction", "compare", to=EVERY_MODEL)
+    document = changed(document, "construction", "horizon", to="Z")
+    study = Study.from_dict(document)
+    world = World(EXPONENTIAL, reach=5000.0)
+    section = run(study, sources_for(world), [line_for(world)]).sections[0]
+    texts = texts_of(comparison_figure(study, section))
+    assert texts["comparison-6-3-1"].startswith("not tested: there are no usable")
+    assert texts["status-1"].startswith("Not solved")
+
+
+def test_no_figure_without_a_comparison():
+    """Said in words, with what to do."""
+    world = World(EXPONENTIAL, reach=5000.0)
+    study = study_for(world)
+    section = run(study, sources_for(world), [line_for(world)]).sections[0]
+    with pytest.raises(GeomcoreError, match=r"construction\.compare") as caught:
+        comparison_figure(study, section)
+    assert caught.value.code == "no-comparison"

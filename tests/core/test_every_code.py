@@ -27,6 +27,7 @@ MODULES = (
     "kinematics",
     "lostarea",
     "picks",
+    "plot_comparison",
     "porosity",
     "problem",
     "profile",

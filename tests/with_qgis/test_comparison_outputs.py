@@ -4,6 +4,7 @@ import json
 import math
 import sqlite3
 from contextlib import closing
+from pathlib import Path
 
 import ground
 import pytest
@@ -290,6 +291,18 @@ def test_traces_say_how_far_and_why_they_are_trusted(judged, plain):
         assert trace["sigma_shear_angle"] > trace["sigma_picks"] > 0
     (trace, _) = rows(plain["OUTPUT"], "predicted_fault_traces")
     assert trace["sigma_shear_angle"] is None  # nothing was stated of the angle
+
+
+def test_figures_of_the_comparison_stand_beside_those_of_the_sections(judged, plain):
+    """One more for each section where a comparison was asked for, in every format."""
+    found = sorted(path.stem for path in Path(judged["PLOTS"]).glob("*.png"))
+    sections = [name for name in found if name.startswith("section_")]
+    assert len(sections) == 2
+    compared = [name.replace("section_", "comparison_", 1) for name in sections]
+    assert found == sorted(sections + compared)
+    for kind in ("svg", "pdf"):
+        assert len(list(Path(judged["PLOTS"]).glob(f"comparison_*.{kind}"))) == 2
+    assert not list(Path(plain["PLOTS"]).glob("comparison_*"))
 
 
 # ---- the single tool ---------------------------------------------------------------
