@@ -704,3 +704,48 @@ def test_horizon_that_cannot_join_the_fit_is_left_out_with_a_doubt():
     alone = study_for(WORLD, sigma=2.0, solver="fit")
     codes = [d.code for d in only(ran(study=alone)).prediction.doubts]
     assert "horizon-not-fitted" not in codes
+
+
+@settings(max_examples=60)
+@given(
+    seed=st.integers(0, 10_000),
+    fault=st.sampled_from(FAULTS),
+    angle=st.sampled_from([0.0, 20.0, 45.0, -15.0, -40.0]),
+    keep=st.sampled_from([1.0, 0.3, 0.05]),
+    noise=st.sampled_from([0.0, 10.0, 300.0]),
+    buffer=st.sampled_from([0.0, 50.0, 500.0]),
+    regional=st.fixed_dictionaries(
+        {},
+        optional={
+            "z": st.floats(-900.0, 300.0),
+            "dip": st.floats(-5.0, 5.0),
+            "far_from": st.floats(500.0, 5000.0),
+            "footwall_within": st.floats(10.0, 500.0),
+        },
+    ),
+)
+def test_whatever_comes_in_a_section_ends_in_a_fault_or_in_words(
+    seed, fault, angle, keep, noise, buffer, regional
+):
+    """Thinned, noisy, contradictory input: a sound prediction or a stated reason."""
+    rng = np.random.default_rng(seed)
+    world = World(fault, heave=rng.choice([150.0, 900.0]), reach=5000.0, per_strip=12.0)
+    deep, tops = (p[rng.random(len(p)) < keep] for p in truth_points(world))
+    tops = np.vstack([tops, tops[:2]])
+    tops[:, 1] += rng.normal(0.0, noise, len(tops)) if noise else 0.0
+    if len(deep) == 0 or len(tops) == 0:
+        return
+    study = study_for(replace(world, angle=angle), sigma=5.0, regional=regional)
+    document = changed(study.to_dict(), "picks", "fault_buffer", to=buffer)
+    document["picks"]["tracked"] = ["tops"]
+    sources = sources_for(world, deep, tops)
+    prediction = only(
+        run(Study.from_dict(document), sources, [line_for(world)])
+    ).prediction
+    if not prediction:
+        assert prediction.reason.startswith("section S1")
+        return
+    trace = prediction.trace
+    assert np.all(np.diff(trace.x) > 0)
+    assert np.isfinite([trace.z, trace.dip, trace.sigma_z]).all()
+    assert np.all(trace.sigma_z >= 0)
