@@ -2,13 +2,14 @@
 
 from .grids import read_grid
 from .opening import length_unit_of, open_layer, say, study_crs, versions
-from .reading import read_section_lines, read_source
+from .reading import near_section, read_section_lines, read_source
 from .results import read_picks, read_traces
 from .writing import Table, reload_layers, write_geopackage
 
 __all__ = [
     "Table",
     "length_unit_of",
+    "near_section",
     "open_layer",
     "read_grid",
     "read_picks",

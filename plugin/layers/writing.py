@@ -455,19 +455,23 @@ def _dress_and_check(path, counts, dress):
     Errors of a full disk may show only when the file is closed, without a word from
     the writer; so the file is opened again and counted.
     """
-    for name, count in counts.items():
+    for name in counts if dress is not None else ():
         layer = QgsVectorLayer(f"{path}|layername={name}", name, "ogr")
-        found = layer.featureCount() if layer.isValid() else -1
-        if found != count:
-            raise OSError(f"layer '{name}' has {max(found, 0)} of {count} rows")
-        if dress is not None:
-            dress(layer)
+        if not layer.isValid():
+            raise OSError(f"layer '{name}' is not in the new file")
+        dress(layer)
         del layer  # closes the file
     with closing(sqlite3.connect(path)) as database:
         database.execute("pragma journal_mode = delete").fetchone()
         verdict = database.execute("pragma quick_check").fetchone()[0]
+        query = "select table_name, feature_count from gpkg_ogr_contents"
+        found = dict(database.execute(query).fetchall())
     if verdict != "ok":
         raise OSError(f"the file is damaged: {verdict}")
+    for name, count in counts.items():
+        rows = (found[name] or 0) if name in found else -1  # null where there is none
+        if rows != count:
+            raise OSError(f"layer '{name}' has {max(rows, 0)} of {count} rows")
 
 
 def _swap(temporary, path):
