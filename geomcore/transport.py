@@ -30,9 +30,9 @@ def trace_parts(prepared, *roles):
 
 
 def _strike_of(prepared):
-    parts = trace_parts(prepared, "fault trace")
-    if not parts:
-        parts = [_long_axis(p) for p in trace_parts(prepared, "cut-off")]
+    parts = trace_parts(prepared, "fault trace") or trace_parts(prepared, "cut-off")
+    # a ring ends where it starts: its ends tell no strike
+    parts = [_long_axis(p) if np.array_equal(p[0], p[-1]) else p for p in parts]
     if not parts:
         raise FrameError(
             "no-strike",

@@ -106,6 +106,14 @@ def test_strike_of_a_fault_polygon_is_its_long_axis():
     assert azimuth == pytest.approx(90.0, abs=0.5)
 
 
+def test_trace_drawn_as_a_closed_ring_has_the_strike_of_its_long_axis():
+    """A fault outlined on the map is not a fault without length."""
+    ring = [(0, -3000, 0), (200, -3000, 0), (200, 3000, 0), (0, 3000, 0), (0, -3000, 0)]
+    document = changed(UNTOLD, "transport", to={"hw_side": "E"})
+    azimuth, _ = resolved(document, trace=Features.lines([ring]))
+    assert azimuth == pytest.approx(90.0, abs=0.5)
+
+
 def test_points_alone_have_no_strike():
     """Fault points tell no strike; a trace or the azimuth is asked for."""
     document = changed(UNTOLD, "transport", to={"hw_side": "E"})
