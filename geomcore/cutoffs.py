@@ -8,7 +8,13 @@ import numpy as np
 from .errors import ConstructionError, Doubt, PicksError
 from .fault import known_fault
 from .profile import fit_line, profile_from_picks
-from .separation import CutOff, Separation, extend_to_fault, level_separation
+from .separation import (
+    CutOff,
+    Separation,
+    crossing_sigma,
+    extend_to_fault,
+    level_separation,
+)
 from .walls import upright_line
 
 __all__ = [
@@ -462,14 +468,15 @@ def _regional(footwall, far, moved_by, fault, foot, spec, slope, where):
         )
     regional = regional.moved_to(at)
     slope_f = float(fault.slope_at(at))
-    s = np.hypot(float(regional.sigma_at(at)), fault.sigma)
-    across = max(abs(slope_f - regional.slope), 1e-9)
+    sigma_x, sigma_z = crossing_sigma(
+        float(regional.sigma_at(at)), fault.sigma, regional.slope, slope_f
+    )
     foot = CutOff(
         "footwall",
         at,
         regional.z0,
-        s / across,
-        s * abs(slope_f) / across,
+        sigma_x,
+        sigma_z,
         regional.how,
         slides=True,
         horizon_slope=regional.slope,

@@ -10,6 +10,7 @@ from .profile import fit_covariance
 __all__ = [
     "CutOff",
     "Separation",
+    "crossing_sigma",
     "extend_to_fault",
     "level_separation",
     "local_curve",
@@ -115,8 +116,8 @@ def extend_to_fault(picks, fault, wall, where):
     -----
     The nearest `CUTOFF_PICKS` picks are extended by a straight line, or by a
     parabola where its curvature is significant (beyond 3 standard errors) and the
-    extension is shorter than the picks used. The error of the extension slides the
-    cut-off along the fault: sigma_x = s/|F' - B'|, sigma_z = s |F'|/|F' - B'|.
+    extension is shorter than the picks used. Its error and the fault's move the
+    cut-off as `crossing_sigma` says.
 
     Raises
     ------
@@ -158,20 +159,40 @@ def extend_to_fault(picks, fault, wall, where):
     step = 1e-3 * span
     bed = float(curve(at + step) - curve(at - step)) / (2 * step)
     slope = float(fault.slope_at(at))
-    s = np.sqrt(float(variance(at)) + fault.sigma**2)
-    across = max(abs(slope - bed), 1e-9)
+    sigma_x, sigma_z = crossing_sigma(np.sqrt(variance(at)), fault.sigma, bed, slope)
     reach = end - at if wall == "hanging wall" else at - end
     cut = CutOff(
         wall,
         at,
         float(fault.z_at(at)),
-        s / across,
-        s * abs(slope) / across,
+        sigma_x,
+        sigma_z,
         f"extended over {max(reach, 0.0):.0f}",
         slides=True,
         horizon_slope=bed,
     )
     return cut, float(reach)
+
+
+def crossing_sigma(of_bed, of_fault, bed_slope, fault_slope):
+    """Give the sigmas of x and z where a bed meets a fault.
+
+    Parameters
+    ----------
+    of_bed, of_fault : float
+        Sigma of z of either at the crossing, independent of each other.
+    bed_slope, fault_slope : float
+        dz/dx of either.
+
+    Notes
+    -----
+    An error of the bed slides the crossing along the fault, one of the fault slides
+    it along the bed: sigma_x^2 = (s_B^2 + s_F^2)/(F' - B')^2 and
+    sigma_z^2 = (F'^2 s_B^2 + B'^2 s_F^2)/(F' - B')^2.
+    """
+    across = max(abs(fault_slope - bed_slope), 1e-9)
+    in_z = np.hypot(fault_slope * of_bed, bed_slope * of_fault)
+    return float(np.hypot(of_bed, of_fault) / across), float(in_z / across)
 
 
 def local_curve(x, z, sigma, end, fault):

@@ -546,3 +546,18 @@ def test_regional_misfit_of_picks_without_sigma_is_said_in_length(miss):
         assert "by 7." in doubts[0].text or "by 8." in doubts[0].text
     else:
         assert not doubts
+
+
+def test_sigma_of_a_crossing_is_that_of_many_drawn_ones():
+    """Two lines with errors of level, drawn often: where they cross scatters so."""
+    from geomcore.separation import crossing_sigma
+
+    rng = np.random.default_rng(12)
+    bed, fault = 0.25, -1.4
+    of_bed, of_fault = rng.normal(0.0, 4.0, 40000), rng.normal(0.0, 9.0, 40000)
+    x = (of_bed - of_fault) / (fault - bed)
+    z = fault * x + of_fault
+    sigma_x, sigma_z = crossing_sigma(4.0, 9.0, bed, fault)
+    # 40000 draws tell a standard deviation to 0.4 %
+    assert np.std(x) == pytest.approx(sigma_x, rel=0.015)
+    assert np.std(z) == pytest.approx(sigma_z, rel=0.015)
