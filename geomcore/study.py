@@ -26,6 +26,7 @@ from .digest import digest
 from .errors import Doubt, FrameError, GeomcoreError, StudyError, Unsolved
 from .fault import known_fault
 from .forward import forward_past_subsidiaries
+from .growth import growth_doubts
 from .kinematics import (
     ConstantBedLength,
     ConstantHeave,
@@ -616,6 +617,7 @@ def construct(study, frame, picks):
     except GeomcoreError as error:
         prediction = Unsolved(frame.section_id, error.code, str(error))
     separations += _other_separations(picks, fault, options, separations)
+    doubts += _growth(study, picks.depth, separations) if prediction else []
     horizons = _further(study, frame, picks.depth, prediction) if prediction else ()
     result = SectionResult(
         frame,
@@ -793,6 +795,14 @@ def _other_separations(picks, fault, options, done):
                 # a horizon that is not cut here has no separation to report
                 continue
     return results
+
+
+def _growth(study, picks, separations):
+    """Doubt horizons used as older than the fault that thicken towards it."""
+    spec = study.construction
+    shared = [h.name for h in spec.further_horizons]
+    measured = [s.separation for s in separations]
+    return growth_doubts(picks, measured, spec.horizon, spec.shear_angle, shared)
 
 
 def _further(study, frame, picks, prediction):

@@ -24,6 +24,7 @@ MODULES = (
     "doubts",
     "fault",
     "forward",
+    "growth",
     "kinematics",
     "lostarea",
     "picks",
