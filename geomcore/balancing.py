@@ -126,6 +126,19 @@ def _require_solved(result):
         raise GeomcoreError(result.prediction.code, result.prediction.reason)
 
 
+def _require_one_block(prediction, where):
+    """Refuse a hanging wall whose blocks moved by different heaves."""
+    if prediction.subsidiaries:
+        names = ", ".join(f"'{s.fault.plane.name}'" for s in prediction.subsidiaries)
+        raise GeomcoreError(
+            "subsidiary-balance",
+            f"the subsidiary fault {names} parts the hanging wall into blocks of "
+            "different heave; lost area over one heave gives no depth there.",
+            where,
+            "Use the construction, or balance sections without such a fault.",
+        )
+
+
 def _profile(picks, name, wall):
     return profile_from_picks(picks.of("horizon", name, wall))
 
@@ -161,12 +174,13 @@ def balance_section(study, result, growth=(), level=0.9):
     Raises
     ------
     GeomcoreError
-        If the section is not solved, or its model does not keep area; with the
-        reason.
+        If the section is not solved, its model does not keep area, or subsidiary
+        faults part its hanging wall; with the reason.
     """
     _require_solved(result)
     prediction, where = result.prediction, f"section {result.frame.section_id}"
     require_area(why_no_area(prediction.model, prediction.compaction), where)
+    _require_one_block(prediction, where)
     horizons = section_horizons(study, result)
     own = horizons.problems[0]
     areas = tuple(lost_areas(horizons.problems, horizons.footwalls))

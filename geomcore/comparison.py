@@ -8,8 +8,9 @@ import numpy as np
 from .errors import ConstructionError, GeomcoreError, Unsolved
 from .fit import assemble, solve_fit, straight_evidence, whitened
 from .fitting import section_rows
-from .kinematics import ConstantHeave
+from .kinematics import ConstantHeave, to_shear_frame
 from .problem import Problem, bed_from, bed_in_frame
+from .profile import Profile
 
 __all__ = [
     "Comparison",
@@ -319,7 +320,18 @@ def _words(verdict, dip, rms, worst, ratio, but):
 
 
 def problem_of(prediction, fault, bed, options, where):
-    """Write a prediction's inputs as a problem of constant heave (vertical shear)."""
+    """Write a prediction's inputs as a problem of constant heave (vertical shear).
+
+    Outboard of a subsidiary fault the heave is another, and in its shadow the bed
+    does not see the master: it counts up to there.
+    """
+    if prediction.subsidiaries:
+        angle = prediction.model.shear_angle
+        seen = to_shear_frame(bed.x, bed.z, angle) < min(
+            s.shadow[0] for s in prediction.subsidiaries
+        )
+        columns = (bed.x, bed.z, bed.sigma, bed.correlation)
+        bed = Profile(*(c[seen] for c in columns))
     return Problem(
         where,
         prediction.separation,

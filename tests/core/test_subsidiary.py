@@ -8,11 +8,13 @@ import pytest
 from oracles import foot_of_shear_line
 from worlds import World, frame_for, joined, study_for, table
 
+from geomcore.comparison import problem_of
 from geomcore.construction import predict_fault
 from geomcore.errors import ConstructionError
 from geomcore.fault import KnownFault, known_fault
 from geomcore.kinematics import ConstantHeave, ConstantSlip
 from geomcore.offsets import unpicked_offsets
+from geomcore.problem import MarchOptions
 from geomcore.profile import Profile, line_through
 from geomcore.separation import CutOff, Separation
 from geomcore.sources import Features
@@ -508,6 +510,26 @@ def test_section_with_picks_of_a_subsidiary_fault_just_works(case, solver):
     assert older.misfit_n > 100
     assert older.misfit_rms < 1.0
     assert "unpicked-offset" not in [d.code for d in section.all_doubts]
+
+
+def test_balance_is_not_offered_and_the_straight_test_stops_at_the_first_fault():
+    """One heave does not hold for all blocks: what needs it says so or stops there."""
+    truth = ground(CASES["vertical, antithetic"])
+    line = SectionLine("S1", World().place.at([START, 9000.0]))
+    asked = study_of(truth, balance=True, compare=[{"solver": "fit"}])
+    (section,) = run(asked, layers_of(truth), [line]).sections
+    assert not section.balance
+    assert section.balance.code == "subsidiary-balance"
+    assert "'B'" in section.balance.reason
+    start = section.prediction.subsidiaries[0].shadow[0]
+    bed = section.picks.of("horizon", "A", "hanging wall")
+    bed = Profile(bed.x, bed.z, bed.sigma_z)
+    known = section.fault
+    problem = problem_of(section.prediction, known, bed, MarchOptions(), "here")
+    assert start - 30.0 < problem.bed.x[-1] < start
+    # the depths of two solvers differ by no more than the straight line in the shadow
+    assert section.comparison.spread_max < 20.0
+    assert section.comparison.straight.verdict == "curved"
 
 
 @pytest.mark.parametrize("run_of_plane", [0.6, -0.6])
