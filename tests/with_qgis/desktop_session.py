@@ -90,6 +90,16 @@ def inked(image):
     return counts
 
 
+def wait_for_ink(grab, ink, least):
+    """Wait until a picture shows something; a slow machine draws late."""
+    wait_until(lambda: inked(grab())[ink] > least or pause(1500), f"{ink} in a picture")
+
+
+def screen_inside():
+    """Give what the screen shows of a 3D view now."""
+    return inside(QApplication.primaryScreen().grabWindow(0))
+
+
 def dock(part):
     """Find a dock by a part of its object name or title."""
     for one in iface.mainWindow().findChildren(QDockWidget):
@@ -285,7 +295,8 @@ def look_at_profile():
     canvas.refresh()
     pause(3000)
     canvas.zoomFull()
-    pause(3000)
+    wait_for_ink(lambda: canvas.grab().toImage(), "fault", 300)
+    pause(2000)
     found["profile_layers"] = [layer.name() for layer in canvas.layers()]
     found["profile"] = inked(canvas.grab().toImage())
     shoot("07_profile")
@@ -305,7 +316,8 @@ def look_at_3d():
     )
     pause(500)
     wait_until(lambda: canvas.scene().totalPendingJobsCount() == 0, "the 3D view")
-    pause(2500)
+    wait_for_ink(screen_inside, "fault", 300)
+    pause(1500)  # the last tiles
     found["view_3d"] = inked(inside(shoot("08_view_3d")))
 
 
@@ -315,7 +327,8 @@ def look_at_saved_3d():
     root.findGroup("Results").setItemVisibilityChecked(True)
     action("Faults in 3D").trigger()
     widen("Faults in 3D")
-    pause(8000)
+    wait_for_ink(screen_inside, "fault", 300)
+    pause(4000)  # the last tiles
     found["saved_view_3d"] = inked(inside(shoot("09_saved_view_3d")))
 
 
