@@ -23,7 +23,7 @@ from ...geomcore.section import parse_azimuth
 from ...geomcore.sources import Features
 from ...geomcore.study import SectionLine
 from .opening import is_undefined, open_layer, say
-from .wkb import Parts, UnknownGeometry, parse_wkb
+from .wkb import Parts, PartsCollector, UnknownGeometry, parse_wkb
 
 __all__ = ["near_section", "read_section_lines", "read_source", "read_table"]
 
@@ -46,8 +46,8 @@ _NUMERIC = (
     QMetaType.Type.Float,
     QMetaType.Type.Short,
 )
-#: Features held at once, and geometries parsed at once.
-_FEATURES, _PARSED = 100, 2000
+#: Features held at once; geometries, or bytes of them, parsed at once.
+_FEATURES, _PARSED, _BYTES = 100, 5000, 500_000
 
 
 def read_source(
@@ -275,11 +275,12 @@ def read_table(layer, indices, crs, transform_context, feedback=None, near=None)
         lost.append(feature.id())
 
     request = _request(layer, indices, crs, transform_context, feedback, count_lost)
-    fid, blocks, columns = [], [], [[] for _ in indices]
+    fid, columns = [], [[] for _ in indices]
+    parts = PartsCollector(0 if near is not None else layer.featureCount())
     for features in _iterators(layer, request, near):
-        _collect(features, indices, fid, blocks, columns, feedback)
+        _collect(features, indices, fid, parts, columns, feedback)
     table = FeatureTable(
-        np.array(fid, dtype=np.int64), Parts.joined(blocks), columns, frozenset(lost)
+        np.array(fid, dtype=np.int64), parts.parts(), columns, frozenset(lost)
     )
     return table.in_order()
 
@@ -309,23 +310,25 @@ def _iterators(layer, request, near):
         )
 
 
-def _collect(features, indices, fid, blocks, columns, feedback):
+def _collect(features, indices, fid, parts, columns, feedback):
     """Take what is needed of each feature; the hot loop of reading.
 
     Features are held few at a time and parsed in larger blocks, so that neither they
     nor their bytes leave the processor's cache before they are arrays.
     """
-    wkb = []
+    wkb, size = [], 0
     while True:
         block = list(islice(features, _FEATURES))
-        wkb += [f.geometry().asWkb().data() for f in block]
+        own = [f.geometry().asWkb().data() for f in block]
         fid += [f.id() for f in block]
         for i, column in zip(indices, columns):
             column += [f[i] for f in block]
+        wkb += own
+        size += sum(map(len, own))
         done = len(block) < _FEATURES
-        if len(wkb) >= _PARSED or done:
-            blocks.append((_parse(wkb), len(wkb)))
-            wkb = []
+        if size >= _BYTES or len(wkb) >= _PARSED or done:
+            parts.add(_parse(wkb), len(wkb))
+            wkb, size = [], 0
             check_cancelled(feedback)
         if done:
             return

@@ -10,11 +10,20 @@ from dataclasses import dataclass
 
 import numpy as np
 
-__all__ = ["Parts", "UnknownGeometry", "line_wkb", "parse_wkb", "point_wkb"]
+__all__ = [
+    "Parts",
+    "PartsCollector",
+    "UnknownGeometry",
+    "line_wkb",
+    "parse_wkb",
+    "point_wkb",
+]
 
 _POINT, _LINE, _POLYGON, _TRIANGLE = 1, 2, 3, 17
 #: Multi-geometries, collection, polyhedral surface and TIN: a count and members.
 _MANY = (4, 5, 6, 7, 15, 16)
+#: Most vertices that room is made for ahead of their coming.
+_ROOM = 8_000_000
 #: Flag for Z in codes older than ISO's.
 _OLD_Z = 1 << 31
 _NATIVE = "<" if sys.byteorder == "little" else ">"
@@ -89,34 +98,51 @@ class Parts:
         rows = self.rows[np.repeat(keep, self.count)]
         return Parts(self.kind[keep], self.owner[keep], self.count[keep], rows)
 
-    @classmethod
-    def joined(cls, blocks):
-        """Join blocks of geometries.
 
-        Parameters
-        ----------
-        blocks : list of tuple (Parts, int)
-            Each with the number of geometries it was parsed from.
-        """
-        if not blocks:
-            none = np.empty(0, dtype=np.int64)
-            return cls(none, none, none, np.empty((0, 2)))
-        parts = [p for p, _ in blocks]
-        width = max(p.rows.shape[1] for p in parts)
-        before = np.cumsum([0] + [n for _, n in blocks])
-        return cls(
-            np.concatenate([p.kind for p in parts]),
-            np.concatenate([p.owner + n for p, n in zip(parts, before)]),
-            np.concatenate([p.count for p in parts]),
-            np.concatenate([_widened(p.rows, width) for p in parts]),
-        )
+class PartsCollector:
+    """Joins blocks of `Parts` in one array that is made once where that is possible.
 
+    Memory that is touched for the first time costs more than the parsing itself.
 
-def _widened(rows, width):
-    """Coordinates with a Z of NaN where they have none and others do."""
-    if rows.shape[1] == width:
-        return rows
-    return np.column_stack([rows, np.full(len(rows), np.nan)])
+    Parameters
+    ----------
+    expected : int
+        Geometries that will come, 0 or less if unknown; with the first block's
+        vertices per geometry it tells how much room is needed.
+    """
+
+    def __init__(self, expected=0):
+        self.expected = expected
+        self.geometries = self.used = 0
+        self.columns = []
+        self.rows = np.empty((0, 2))
+
+    def add(self, parts, geometries):
+        """Add the parts of a block and say how many geometries it was parsed from."""
+        self.columns.append((parts.kind, parts.owner + self.geometries, parts.count))
+        self.geometries += geometries
+        n, width = parts.rows.shape
+        self._make_room(n, max(width, self.rows.shape[1]))
+        self.rows[self.used : self.used + n, :width] = parts.rows
+        self.rows[self.used : self.used + n, width:] = np.nan
+        self.used += n
+
+    def _make_room(self, n, width):
+        if self.used + n <= len(self.rows) and width == self.rows.shape[1]:
+            return
+        needed = self.used + n
+        guess = 1.02 * self.expected * needed / max(self.geometries, 1)
+        room = max(min(guess, needed + _ROOM), 1.5 * len(self.rows), needed)
+        rows = np.empty((int(room) + 1, width))
+        rows[: self.used, : self.rows.shape[1]] = self.rows[: self.used]
+        rows[: self.used, self.rows.shape[1] :] = np.nan
+        self.rows = rows
+
+    def parts(self):
+        """Give everything that was added as one `Parts`."""
+        none = np.empty(0, dtype=np.int64)
+        columns = [np.concatenate([none, *c]) for c in zip(*self.columns)]
+        return Parts(*(columns or [none] * 3), self.rows[: self.used])
 
 
 def parse_wkb(geometries):

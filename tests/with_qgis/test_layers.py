@@ -251,6 +251,21 @@ def test_any_mixture_of_geometries_gives_the_coordinates_shapely_gives(shapes):
     assert parts.offsets[-1] == len(expected)
 
 
+@settings(max_examples=60)
+@given(st.lists(geometries(), max_size=9), st.integers(1, 4), st.integers(-1, 20))
+def test_blocks_are_joined_to_what_one_block_would_be(shapes, step, expected):
+    """However the geometries come, with Z or without, nothing is shifted or lost."""
+    from heaveline.plugin.layers.wkb import PartsCollector, parse_wkb
+
+    wkb = [shapely.to_wkb(s, flavor="iso") for s in shapes]
+    collected = PartsCollector(expected)
+    for i in range(0, len(wkb), step):
+        collected.add(parse_wkb(wkb[i : i + step]), len(wkb[i : i + step]))
+    one, other = collected.parts(), parse_wkb(wkb)
+    for name in ("kind", "owner", "count", "offsets", "xy", "z"):
+        assert np.array_equal(getattr(one, name), getattr(other, name), equal_nan=True)
+
+
 def test_old_codes_for_z_are_understood():
     """Geometries marked 2.5D in the old way keep their Z."""
     from heaveline.plugin.layers.wkb import parse_wkb
