@@ -137,12 +137,18 @@ def _single_errors(problem):
         ("footwall_on_regional", _of_fault(problem, foot), "known fault"),
         ("hanging_wall_x", 0.0 if hang.slides else hang.sigma_x, "cut-offs"),
         ("footwall_x", 0.0 if foot.slides else foot.sigma_x, "cut-offs"),
-        ("angle", problem.options.shear_angle_sigma, "shear angle"),
+        ("angle", _of_angle(problem), "shear angle"),
     ]
     for i, fault in enumerate(problem.subsidiaries):
         sigma = fault.added_sigma(problem.tan)
         found.append((f"{_ADDED}{i}", sigma, "cut-offs"))
     return [f for f in found if f[1] > 0]
+
+
+def _of_angle(problem):
+    """Sigma of the shear angle; 0 for models that have none."""
+    has_angle = hasattr(problem.model, "ANGLE_BOUNDS")
+    return problem.options.shear_angle_sigma if has_angle else 0.0
 
 
 def _of_fault(problem, cut):

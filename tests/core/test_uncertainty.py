@@ -160,3 +160,14 @@ def test_error_along_the_shear_line_is_larger_at_fixed_x():
     ratio = trace.sigma_z[own][:-1] / expected[:-1]
     assert ratio.max() == pytest.approx(1.0, abs=0.05)
     assert ratio.min() > 0.65
+
+
+def test_models_without_a_shear_angle_ignore_its_sigma():
+    """Constant slip has no shear angle to be unsure of."""
+    from geomcore.kinematics import ConstantSlip
+
+    inputs = direct_inputs(World(EXPONENTIAL, angle=0.0), sigma=1.0)
+    inputs["model"] = ConstantSlip()
+    inputs["options"] = MarchOptions(shear_angle_sigma=5.0)
+    prediction = predict_fault(**inputs)
+    assert "shear angle" not in prediction.error_shares
