@@ -325,7 +325,8 @@ def test_two_subsidiary_faults_over_a_planar_master():
     )
 
 
-def test_stated_sigma_holds_beyond_a_subsidiary_fault():
+@pytest.mark.parametrize(("solver", "most"), [("march", 1.5), ("fit", 1.2)])
+def test_stated_sigma_holds_beyond_a_subsidiary_fault(solver, most):
     """Pick noise and the noise of its cut-offs explain the scatter of the fault."""
     truth = ground(CASES["20 antithetic shear, antithetic"])
     rng = np.random.default_rng(7)
@@ -333,14 +334,14 @@ def test_stated_sigma_holds_beyond_a_subsidiary_fault():
     for _ in range(40):
         inputs, picks = inputs_of(truth, 8.0, rng)
         faults, _ = measure_subsidiaries(picks, "A")
-        trace = predict_fault(**inputs, subsidiaries=faults).trace
+        trace = predict_fault(**inputs, subsidiaries=faults, solver=solver).trace
         found.append(trace.z_at(at))
         stated.append(np.interp(at, trace.x, trace.sigma_z))
     scatter, stated = np.std(found, axis=0), np.mean(stated, axis=0)
-    # 40 runs tell a standard deviation to 11 %. The picks beside the gap count twice,
-    # in the bed and in the cut-offs extended from them, so too much is stated here
-    # (1.32 times the scatter); never less than 0.8 of it.
-    assert np.all((stated > 0.8 * scatter) & (stated < 1.5 * scatter))
+    # 40 runs tell a standard deviation to 11 %. In the march the picks beside the gap
+    # count twice, in the bed and in the cut-offs extended from them, so too much is
+    # stated there (1.3 times the scatter).
+    assert np.all((stated > 0.75 * scatter) & (stated < most * scatter))
 
 
 def test_wide_shadow_is_doubted_and_a_wider_one_ends_the_march():
@@ -463,11 +464,14 @@ def study_of(truth, **construction):
     return Study.from_dict(document)
 
 
-def layers_of(truth):
-    """Point layers of a hanging wall cut by a subsidiary fault, and the trace."""
+def layers_of(truth, known_to=0.0):
+    """Point layers of a hanging wall cut by a subsidiary fault, and the trace.
+
+    The fault is picked down to the horizon's cut-off, or so far beyond.
+    """
     place = World().place
     foot, hang = truth.footwall, truth.hanging_wall
-    x = np.linspace(0.0, hang[0], 40)[1:]
+    x = np.linspace(0.0, hang[0] + known_to, 40)[1:]
     before = np.arange(foot[0] - 2500.0, foot[0] - 20.0, 60.0)
 
     def points(rows):
@@ -510,6 +514,19 @@ def test_section_with_picks_of_a_subsidiary_fault_just_works(case, solver):
     assert older.misfit_n > 100
     assert older.misfit_rms < 1.0
     assert "unpicked-offset" not in [d.code for d in section.all_doubts]
+
+
+@pytest.mark.parametrize("case", list(CASES.values())[:3], ids=list(CASES)[:3])
+def test_fit_of_two_horizons_cut_by_one_subsidiary_fault(case):
+    """Each horizon has its own cut-offs on it and its own shadow."""
+    truth = ground(case)
+    line = SectionLine("S1", World().place.at([START, 9000.0]))
+    study = study_of(truth, solver="fit", fit_horizons=["Older"])
+    (section,) = run(study, layers_of(truth, 400.0), [line]).sections
+    prediction = section.prediction
+    assert set(prediction.detail.residuals.horizon) == {"A", "Older"}
+    error = prediction.trace.z - truth.truth(prediction.trace.x + START)
+    assert np.abs(error).max() < 5.0
 
 
 def test_balance_is_not_offered_and_the_straight_test_stops_at_the_first_fault():
