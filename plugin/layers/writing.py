@@ -26,7 +26,7 @@ from qgis.core import (
     QgsVectorFileWriter,
     QgsVectorLayer,
 )
-from qgis.PyQt.QtCore import QCoreApplication, QMetaType, QThread
+from qgis.PyQt.QtCore import QMetaObject, QMetaType, Qt
 
 from ...geomcore.errors import GeomcoreError
 from ..fields import Table
@@ -214,7 +214,7 @@ def _same_file(a, b):
 
 
 def reload_layers(path, project=None):
-    """Let the open layers of a file show its new content (in the main thread).
+    """Let the open layers of a file show its new content, from whatever thread.
 
     Parameters
     ----------
@@ -222,12 +222,10 @@ def reload_layers(path, project=None):
     project : QgsProject, optional
         The current one if not given.
     """
-    application = QCoreApplication.instance()
-    if application is None or QThread.currentThread() != application.thread():
-        return
     for layer in _layers_at(Path(path), project or QgsProject.instance()):
-        layer.dataProvider().reloadData()
-        layer.reload()
+        for slot in ("reload", "triggerRepaint"):
+            # at once in the layer's own thread, else when that thread gets to it
+            QMetaObject.invokeMethod(layer, slot, Qt.ConnectionType.AutoConnection)
 
 
 def _state(path):

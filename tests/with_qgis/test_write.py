@@ -7,6 +7,7 @@ import contextlib
 import hashlib
 import sqlite3
 import stat
+import threading
 from pathlib import Path
 
 import numpy as np
@@ -341,6 +342,28 @@ def test_open_layers_show_the_new_rows(target):
     write(target, [sections("new 1", "new 2", "new 3")], None, project)
     assert [f["section_id"] for f in layer.getFeatures()] == ["new 1", "new 2", "new 3"]
     assert layer.featureCount() == 3
+
+
+def test_open_layers_follow_a_write_in_the_background(target):
+    """An algorithm of the toolbox writes in another thread; the layer follows."""
+    from qgis.core import QgsApplication, QgsProject
+
+    project = QgsProject()
+    layer = opened(target, "section_lines")
+    project.addMapLayer(layer)
+    assert layer.featureCount() == 2
+    repaints = []
+    layer.repaintRequested.connect(lambda *_: repaints.append(1))
+    thread = threading.Thread(
+        target=write, args=(target, [sections("new")], None, project)
+    )
+    thread.start()
+    thread.join()
+    assert repaints == []
+    QgsApplication.processEvents()
+    assert repaints
+    assert [f["section_id"] for f in layer.getFeatures()] == ["new"]
+    assert layer.featureCount() == 1
 
 
 # ---- failures ----------------------------------------------------------------------
