@@ -64,6 +64,8 @@ _PREDICTED = (
     "march_table",
     "method_comparison",
     "balance",
+    "subsidiary_faults",
+    "growth_history",
     "runs",
 )
 

@@ -649,6 +649,152 @@ _BALANCE = LayerSpec(
     "lengths, one row a horizon. The area of one horizon is no independent test.",
 )
 
+_SUBSIDIARY_FAULTS = LayerSpec(
+    "subsidiary_faults",
+    None,
+    (
+        *_STAMP,
+        _SECTION,
+        _text("name", "Subsidiary fault", "Name of the subsidiary fault."),
+        _text("horizon", "Horizon", "Name of the horizon that it cuts."),
+        _text(
+            "sense",
+            "Sense",
+            "'antithetic' where it dips towards the master fault, else 'synthetic'.",
+        ),
+        _real("dip", "Dip", "Of the line through its picks, degrees from level."),
+        _real(
+            "heave",
+            "Heave",
+            "Horizontal separation of the horizon on it along transport, positive for "
+            f"a normal fault, {_UNIT}.",
+        ),
+        _real(
+            "throw",
+            "Throw",
+            "Vertical separation of the horizon on it, positive for a normal fault, "
+            f"{_UNIT}.",
+        ),
+        _real(
+            "added_heave",
+            "Added oblique heave",
+            "What the block beyond it moved more than the block on the master's side, "
+            f"heave - throw tan(shear angle) where antithetic, else +, {_UNIT}.",
+        ),
+        _real(
+            "sigma_added_heave",
+            "Sigma of added heave",
+            f"One standard deviation of it, {_UNIT}.",
+        ),
+        _real(
+            "share",
+            "Share of extension",
+            "Added oblique heave over the oblique heave of the outermost block, as a "
+            "fraction.",
+        ),
+        _real(
+            "branch_x",
+            "x of branch point",
+            "Where it meets the predicted master fault, distance along transport from "
+            f"the footwall end of the section, {_UNIT}; null where it does not.",
+        ),
+        _real("branch_z", "z of branch point", f"Elevation there; {_UP}."),
+        _real(
+            "shadow_from_x",
+            "Shadow from x",
+            "The horizon says nothing of the master fault from here, where the shear "
+            f"line at the shadow's edge meets it, x along transport, {_UNIT}; null "
+            "where that lies beyond the predicted trace.",
+        ),
+        _real(
+            "shadow_to_x",
+            "Shadow to x",
+            f"To here, on the master fault as before, {_UNIT}.",
+        ),
+    ),
+    "Subsidiary faults",
+    "Faults of the hanging wall that cut the horizon, what each adds to the heave and "
+    "where it hides the master fault, one row a section and fault.",
+)
+
+_GROWTH_HISTORY = LayerSpec(
+    "growth_history",
+    None,
+    (
+        *_STAMP,
+        _SECTION,
+        _HORIZON,
+        _real(
+            "heave",
+            "Heave since",
+            "Horizontal separation of its cut-offs along transport: all the fault "
+            f"moved since it was laid down, {_UNIT}.",
+        ),
+        _real(
+            "throw",
+            "Throw since",
+            "Vertical separation of its cut-offs, positive down to the hanging wall, "
+            f"{_UNIT}.",
+        ),
+        _real(
+            "oblique_heave",
+            "Oblique heave since",
+            "Heave + throw tan(shear angle); horizons older than the fault share it, "
+            f"{_UNIT}.",
+        ),
+        _real(
+            "sigma_heave",
+            "Sigma of heave",
+            f"One standard deviation, from those of the cut-offs, {_UNIT}.",
+        ),
+        _real(
+            "sigma_throw",
+            "Sigma of throw",
+            f"One standard deviation, from those of the cut-offs, {_UNIT}.",
+        ),
+        _real(
+            "heave_before",
+            "Heave before",
+            "What the fault moved between the next older horizon and this one; null "
+            f"for the oldest, {_UNIT}.",
+        ),
+        _real(
+            "throw_before",
+            "Throw before",
+            f"As the heave before; null for the oldest, {_UNIT}.",
+        ),
+        _text(
+            "interval",
+            "Interval",
+            "From this horizon to the next older one; null for the oldest.",
+        ),
+        _real(
+            "expansion_index",
+            "Expansion index",
+            "Thickness of the interval along the shear lines in the hanging wall over "
+            "that in the footwall, at the fault; 1 for strata older than the fault, "
+            "more for growth strata. A wrong shear angle changes it.",
+        ),
+        _real(
+            "sigma_expansion",
+            "Sigma of expansion index",
+            "One standard deviation of the index, from the picks only.",
+        ),
+        FieldSpec(
+            "is_growth",
+            "boolean",
+            "Growth",
+            "Whether the interval thickens by more than its error; null where it "
+            "could not be measured.",
+        ),
+        _text("note", "Note", "Why there is no index, or what growth means here."),
+    ),
+    "Growth history",
+    "What the fault moved since each horizon was laid down, and how much thicker the "
+    "interval below it is in the hanging wall, from the oldest horizon to the "
+    "youngest; where two horizons or more were measured in depth.",
+)
+
 _RUNS = LayerSpec(
     "runs",
     None,
@@ -689,13 +835,21 @@ LAYERS = {
         _MARCH_TABLE,
         _METHOD_COMPARISON,
         _BALANCE,
+        _SUBSIDIARY_FAULTS,
+        _GROWTH_HISTORY,
         _INPUT_STATEMENT,
         _RUNS,
     )
 }
 
-#: Tables that are written only where the study asks for what they hold.
-ON_REQUEST = (_METHOD_COMPARISON.name, _BALANCE.name)
+#: Tables that are written only where the study asks for what they hold, or where its
+#: sections have subsidiary faults or several horizons.
+ON_REQUEST = (
+    _METHOD_COMPARISON.name,
+    _BALANCE.name,
+    _SUBSIDIARY_FAULTS.name,
+    _GROWTH_HISTORY.name,
+)
 
 
 @dataclass(frozen=True, eq=False)

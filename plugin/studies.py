@@ -305,7 +305,8 @@ def result_tables(run):
     Returns
     -------
     list of Table
-        Comparison and balance only where the study asks for them.
+        Comparison and balance only where the study asks for them, subsidiary faults
+        and growth only where there are any.
     """
     made = rows.run_tables(run, _now(), __version__, versions())
     return [t for t in made if len(t) or t.name not in ON_REQUEST]

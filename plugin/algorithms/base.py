@@ -316,6 +316,8 @@ def _new_style():
 _DRAWING_ORDER = (
     "runs",
     "input_statement",
+    "growth_history",
+    "subsidiary_faults",
     "balance",
     "method_comparison",
     "march_table",

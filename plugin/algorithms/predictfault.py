@@ -51,6 +51,8 @@ class PredictFault(ConstructingAlgorithm):
         "march_table",
         "method_comparison",
         "balance",
+        "subsidiary_faults",
+        "growth_history",
         "runs",
     )
 

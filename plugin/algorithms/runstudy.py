@@ -30,6 +30,8 @@ class RunStudy(ConstructingAlgorithm):
         "march_table",
         "method_comparison",
         "balance",
+        "subsidiary_faults",
+        "growth_history",
         "input_statement",
         "runs",
     )

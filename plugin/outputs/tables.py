@@ -7,6 +7,7 @@ import numpy as np
 
 from ..fields import Table
 from .judging import balance_table, comparison_table, trust_values
+from .movement import growth_table, subsidiary_table
 
 __all__ = [
     "Stamp",
@@ -99,7 +100,8 @@ def run_tables(run, made_at, tool_version, versions=None):
     Returns
     -------
     list of Table
-        Those on request (`fields.ON_REQUEST`) are empty where not asked for.
+        Those of `fields.ON_REQUEST` are empty where not asked for or where there is
+        nothing of the kind.
     """
     stamp = Stamp.of(run.study, run.digest, made_at, tool_version)
     frames = [s.frame for s in run.sections]
@@ -113,6 +115,8 @@ def run_tables(run, made_at, tool_version, versions=None):
         predicted_horizons_table(stamp, _horizons_of(stamp, run.sections)),
         comparison_table(stamp, run.sections),
         balance_table(stamp, run.sections),
+        subsidiary_table(stamp, run.sections),
+        growth_table(stamp, run.sections, run.study.construction.shear_angle),
         input_statement_table(stamp, run.statement),
     ]
     return [*tables, runs_table(stamp, run, tables, versions)]

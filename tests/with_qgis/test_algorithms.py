@@ -1312,15 +1312,16 @@ def test_results_are_loaded_with_their_style(study_file, tmp_path):
     _, done = algorithm.run(parameters, context, feedback, {}, False)
     assert done
     wanted = context.layersToLoadOnCompletion()
-    assert len(wanted) == len(algorithm.LAYERS) - 4
+    assert len(wanted) == len(algorithm.LAYERS) - 6
     from processing.gui.Postprocessing import handleAlgorithmResults
 
     assert handleAlgorithmResults(algorithm, context, feedback, parameters)
     titles = {layer.name(): layer for layer in project.mapLayers().values()}
     # there are no picks in time and no further horizons: no empty layers are added;
-    # comparison and balance were not asked for
+    # comparison and balance were not asked for, and one horizon without subsidiary
+    # faults has neither their table nor that of growth
     filled = set(algorithm.LAYERS) - {"picks_time", "predicted_horizons"}
-    filled -= {"method_comparison", "balance"}
+    filled -= {"method_comparison", "balance", "subsidiary_faults", "growth_history"}
     assert set(titles) == {LAYERS[name].title for name in filled}
     group = project.layerTreeRoot().findGroup("o")
     order = [node.layer().name() for node in group.findLayers()]
