@@ -16,6 +16,10 @@ MANY_STRIPS = 6
 #: gaps longer than this share of the heave not judged (common practice, no source).
 SMALL_OFFSET, LONG_GAP = 0.02, 0.5
 
+#: Sigmas beyond which a pick is named as an outlier (one in sixteen thousand by
+#: chance), and the most that are named.
+OUTLIER, NAMED = 4.0, 5
+
 
 def march_doubts(problem, solution, trace, detachment):
     """Look over the inputs and the result of a march.
@@ -41,6 +45,7 @@ def march_doubts(problem, solution, trace, detachment):
         *_of_trace(solution, trace),
         *_of_reach(solution, detachment),
         *_of_strips(problem, solution),
+        *_of_residuals(problem, solution),
     ]
     return [Doubt(code, text, problem.where) for code, text in found]
 
@@ -198,6 +203,28 @@ def _of_trace(solution, trace):
             "fault-steep",
             f"the predicted fault dips {steep.max():.0f} degrees near x = {at:.0f}.",
         )
+
+
+def _of_residuals(problem, solution):
+    """Name the picks that miss the fit by more than noise ever does."""
+    if solution.detail is None:
+        return
+    misfit = solution.detail.residuals
+    far = np.flatnonzero(np.abs(misfit.standardised) > OUTLIER)
+    if not len(far):
+        return
+    worst = far[np.argsort(-np.abs(misfit.standardised[far]))][:NAMED]
+    named = ", ".join(
+        f"{misfit.horizon[i]} at x = {misfit.u[i] + misfit.z[i] * problem.tan:.0f} "
+        f"({misfit.residual[i]:+.0f}, {abs(misfit.standardised[i]):.0f} sigma)"
+        for i in worst
+    )
+    more = f" and {len(far) - NAMED} more" if len(far) > NAMED else ""
+    yield (
+        "fit-outliers",
+        f"{len(far)} pick(s) miss the fit by more than {OUTLIER:g} sigma: "
+        f"{named}{more}.",
+    )
 
 
 def _of_reach(solution, detachment):

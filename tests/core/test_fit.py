@@ -303,3 +303,19 @@ def test_fit_refuses_models_that_are_not_linear():
     with pytest.raises(ConstructionError) as error:
         predict_fault(FRAME, sep, known, bed, regional, ConstantSlip(), solver="fit")
     assert error.value.code == "fit-not-linear"
+
+
+def test_outliers_of_a_fit_are_named_with_their_place():
+    """Two bad picks are pointed out; clean noise points at none."""
+    [(sep, bed, regional)], known, _ = section(20.0, noise=8.0, seed=7)
+    z = bed.z.copy()
+    z[[30, 90]] += [70.0, -70.0]
+    bad = Profile(bed.x, z, bed.sigma)
+    model = ConstantHeave(20.0)
+    clean = predict_fault(FRAME, sep, known, bed, regional, model, solver="fit")
+    spoiled = predict_fault(FRAME, sep, known, bad, regional, model, solver="fit")
+    assert "fit-outliers" not in {d.code for d in clean.doubts}
+    [said] = [d.text for d in spoiled.doubts if d.code == "fit-outliers"]
+    assert said.startswith("2 pick(s)")
+    for i in (30, 90):
+        assert f"at x = {bed.x[i]:.0f} " in said
