@@ -1,290 +1,196 @@
-"""The shear angle from the data: several ways, each with its interval.
+"""The shear angle from the data of one section: several ways, each a misfit curve."""
 
-Every way gives a misfit curve chi-square(angle). Curves of independent data add up,
-so sections can be calibrated jointly, and the interval comes from the curve.
-"""
-
-from dataclasses import dataclass, replace
-from typing import Optional
+from dataclasses import replace
 
 import numpy as np
 
+from .anglecurve import (
+    ANGLES,
+    AngleEstimate,
+    estimate,
+    joint_angle,
+    refined,
+    require_scipy,
+    unresolved,
+)
 from .construction import check_problem
-from .errors import ConstructionError, GeomcoreError
-from .kinematics import ConstantHeave, from_shear_frame
-from .problem import Problem, bed_from, solve_march
-from .uncertainty import error_columns
+from .errors import GeomcoreError
+from .jointfit import JointSystem
+from .kinematics import ConstantHeave
+from .lostarea import area_convergence, lost_area
+from .uncertainty import moved_problem, parameter_roots
 
 __all__ = [
     "ANGLES",
+    "AREA",
+    "CUTOFFS",
+    "HORIZONS",
+    "TIES",
+    "WAYS",
     "AngleEstimate",
     "angle_from_area",
     "angle_from_cutoffs",
+    "angle_from_detachment",
     "angle_from_horizons",
+    "angle_from_separations",
     "angle_from_ties",
     "joint_angle",
 ]
 
-#: Angles tried, degrees (methods.md section 6: -35 to 50, then refined).
-ANGLES = np.arange(-35.0, 50.1, 2.5)
-#: Points of the common reach at which predicted faults are compared.
-_POINTS = 16
-#: Width of the 90 % interval beyond which the angle is called not resolved.
-NOT_RESOLVED = 40.0
+#: The ways, as recipes and results name them.
+HORIZONS, TIES, CUTOFFS, AREA = WAYS = ("horizons", "ties", "cut-offs", "area")
+
+#: Angles at which the closed forms are tried, degrees.
+_EVEN = np.arange(ANGLES[0], ANGLES[-1] + 0.1, 0.5)
+#: The search ends outwards where the misfit has grown by this much.
+_STEEP, _ENOUGH = 1000.0, 25.0
 
 
-@dataclass(frozen=True, eq=False)
-class AngleEstimate:
-    """A shear angle from data.
+class _Search:
+    """The misfit of one section against the angle, tried where it matters."""
 
-    Parameters
-    ----------
-    method : str
-        Which data, in words.
-    best : float or None
-        Angle of least misfit, degrees; None where no angle could be tried.
-    mean, sd : float or None
-        Of the likelihood exp(-chi2/2) over the angles tried.
-    low, high : float or None
-        90 % interval, degrees.
-    angles, chi2 : ndarray (n,)
-        Misfit curve; infinite where the construction has no solution.
-    freedom : int
-        Degrees of freedom of chi2.
-    resolved : bool
-    text : str
-        What the data say, in words.
-    """
+    def __init__(self, problems):
+        self.problems = problems
+        self.system = JointSystem(problems)
+        heaves = [p.separation.heave for p in problems]
+        self.widest = int(np.argmax(heaves))
+        hang = problems[self.widest].separation.hanging_wall.x
+        self.alone = self.system.of_one(self.widest, hang)
+        self.rough = {}
+        self.log_weight = None
+        self.fits = {}
 
-    method: str
-    best: Optional[float]
-    mean: Optional[float]
-    sd: Optional[float]
-    low: Optional[float]
-    high: Optional[float]
-    angles: np.ndarray
-    chi2: np.ndarray
-    freedom: int
-    resolved: bool
-    text: str
+    def run(self):
+        """Give angles, misfit and degrees of freedom."""
+        self._scan()
+        if not self.rough:
+            return ANGLES, np.full(len(ANGLES), np.inf), 0.0
+        least = min(self.rough.values(), key=lambda f: f.deviance)
+        self.log_weight = least.log_weight
+        tried = self._outwards(least.angle)
+        angles, values = refined(self._value, tried)
+        if not np.isfinite(values).any():
+            return angles, values, 0.0
+        best = self.fits[angles[int(np.argmin(values))]][0]
+        # differences tell the angle; the level is that of the data's misfit
+        return angles, values - values.min() + best.chi2, best.freedom
 
+    def _scan(self):
+        """Try coarse angles from vertical shear outwards, smoothness free."""
+        for side in (ANGLES[ANGLES >= 0], ANGLES[ANGLES < 0][::-1]):
+            near = self.rough.get(0.0)
+            for angle in side.tolist():
+                possible = _possible(self.problems, angle)
+                fit = self.system.solve(angle, near) if possible else None
+                if fit is None:
+                    continue
+                self.rough[angle] = near = fit
+                least = min(f.deviance for f in self.rough.values())
+                if fit.deviance > least + _STEEP:
+                    break
 
-def _fine(angles, chi2):
-    """Curve on a fine grid by local parabolas through its finite stretch."""
-    finite = np.isfinite(chi2)
-    if finite.sum() < 3:
-        return angles[finite], chi2[finite]
-    a, c = angles[finite], chi2[finite]
-    fine = np.arange(a[0], a[-1] + 1e-9, 0.05)
-    k = np.clip(np.searchsorted(a, fine), 1, len(a) - 2)
-    k = np.where(np.abs(fine - a[k - 1]) < np.abs(fine - a[k]), k - 1, k)
-    k = np.clip(k, 1, len(a) - 2)
-    x0, x1, x2 = a[k - 1], a[k], a[k + 1]
-    l0 = (fine - x1) * (fine - x2) / ((x0 - x1) * (x0 - x2))
-    l1 = (fine - x0) * (fine - x2) / ((x1 - x0) * (x1 - x2))
-    l2 = (fine - x0) * (fine - x1) / ((x2 - x0) * (x2 - x1))
-    # near its minimum the curve is close to a parabola; far up its steep sides a
-    # parabola would overshoot, and where angles have no solution nothing is bridged
-    inside = np.interp(fine, angles, (~finite).astype(float)) < 0.5
-    values = l0 * c[k - 1] + l1 * c[k] + l2 * c[k + 1]
-    low = np.maximum(np.maximum(c[k - 1], c[k]), c[k + 1]) < c.min() + 100.0
-    values = np.where(low, values, np.interp(fine, a, c))
-    return fine[inside], values[inside]
+    def _outwards(self, best):
+        """Try coarse angles to both sides of the best one, smoothness fixed."""
+        tried = {}
+        above = ANGLES >= best  # noqa: SIM300 - read as written
+        for side in (ANGLES[above], ANGLES[~above][::-1]):
+            for angle in side.tolist():
+                tried[angle] = self._value(angle)
+                if not tried[angle] < min(tried.values()) + _ENOUGH:
+                    break
+        return tried
 
-
-def estimate(method, angles, chi2, freedom):
-    """Make an estimate from a misfit curve.
-
-    Parameters
-    ----------
-    method : str
-    angles, chi2 : ndarray (n,)
-    freedom : int
-
-    Returns
-    -------
-    AngleEstimate
-
-    Notes
-    -----
-    The likelihood exp(-chi2/2), with every angle tried equally probable before,
-    gives mean, standard deviation and the 90 % interval. The angle is not resolved
-    where that interval is wider than `NOT_RESOLVED` or runs into the end of the
-    angles tried.
-    """
-    fine, curve = _fine(angles, chi2)
-    if not len(fine):
-        text = "No angle could be tried: the construction has no solution."
-        return AngleEstimate(
-            method, None, None, None, None, None, angles, chi2, freedom, False, text
-        )
-    weight = np.exp(-0.5 * (curve - curve.min()))
-    weight /= weight.sum()
-    best = float(fine[int(np.argmin(curve))])
-    mean = float(weight @ fine)
-    sd = float(np.sqrt(weight @ (fine - mean) ** 2))
-    total = np.cumsum(weight)
-    low, high = (float(np.interp(q, total, fine)) for q in (0.05, 0.95))
-    at_end = weight[0] > 0.02 * weight.max() or weight[-1] > 0.02 * weight.max()
-    resolved = high - low < NOT_RESOLVED and not at_end
-    text = _words(best, low, high, curve.min(), freedom, resolved)
-    return AngleEstimate(
-        method, best, mean, sd, low, high, angles, chi2, freedom, resolved, text
-    )
+    def _value(self, angle):
+        """Misfit of all data less that of one horizon alone, at one angle."""
+        if not _possible(self.problems, angle):
+            return np.inf
+        pool = self.fits or {a: (f, None) for a, f in self.rough.items()}
+        near = pool[min(pool, key=lambda a: abs(a - angle))]
+        joint = self.system.solve(angle, near[0], self.log_weight)
+        if joint is None:
+            return np.inf
+        start = near[1] or joint.of_one(self.widest)
+        alone = self.alone.solve(angle, start, self.log_weight)
+        if alone is None:
+            return np.inf
+        self.fits[angle] = joint, alone
+        return joint.misfit - alone.misfit
 
 
-def _words(best, low, high, least, freedom, resolved):
-    if not resolved:
-        return (
-            f"Not resolved: angles from {low:.0f} to {high:.0f} degrees explain the "
-            "data about as well."
-        )
-    text = f"{best:.1f} degrees, 90 % interval {low:.1f} to {high:.1f}."
-    if freedom > 0 and least > freedom + 3.0 * np.sqrt(2.0 * freedom):
-        text += (
-            f" The misfit is large even there (chi-square {least:.0f} for {freedom} "
-            "degrees of freedom): the horizons do not agree on one fault."
-        )
-    return text
-
-
-@dataclass(frozen=True, eq=False)
-class _March:
-    """One horizon marched at one angle: fault and its errors at any x."""
-
-    x: np.ndarray
-    z: np.ndarray
-    errors: object
-    start_x: float
-
-    def z_at(self, x):
-        return np.interp(x, self.x, self.z)
-
-
-def _marched(problem, angle):
-    """March a horizon at an angle; None where it has no solution."""
-    trial = replace(problem, model=ConstantHeave(float(angle)))
-    try:
-        check_problem(trial)
-        solution = solve_march(trial)
-    except GeomcoreError:
-        return None
-    x = from_shear_frame(solution.u, solution.z, angle)
-    x = np.maximum.accumulate(x)
-    if len(solution.u) <= solution.start:
-        return None
-    hang = trial.separation.hanging_wall.x
-    return _March(x, solution.z, error_columns(trial, solution), hang)
-
-
-def _common(marches):
-    """Points of the reach all marches have beyond their start pieces, or None."""
-    low = max(m.start_x for m in marches)
-    high = min(m.x[-1] for m in marches)
-    return np.linspace(low, high, _POINTS + 1)[1:] if high > low else None
-
-
-def _covariance(march, x):
-    """Covariance of a marched fault, without the piece all horizons share."""
-    columns = march.errors.at(x, without=("known fault", "shear angle"))
-    own = columns @ columns.T
-    # sampling at a few points leaves a little interpolation error of its own
-    return own + 1e-4 * np.trace(own) / len(x) * np.eye(len(x)) + 1e-6 * np.eye(len(x))
-
-
-def angle_from_horizons(problems, angles=ANGLES):
-    """Find the angle at which several horizons predict one fault.
+def angle_from_horizons(problems):
+    """Find the angle at which several horizons, and deep ties, belong to one fault.
 
     Parameters
     ----------
     problems : sequence of Problem
-        One for each horizon of a section, growth horizons with their own regional
-        and cut-offs.
-    angles : ndarray
-        Angles tried, degrees.
+        One for each horizon of a section, growth horizons with their own regional and
+        cut-offs, all on one known fault, whose observed points and deep ties count too.
 
     Returns
     -------
     AngleEstimate
+        Not resolved where one horizon is all there is.
+
+    Raises
+    ------
+    ConstructionError
+        If scipy is missing.
 
     Notes
     -----
-    At each angle every horizon is marched; the weighted mean of the predicted faults
-    over their common reach is the one fault, and chi-square its misfit with the full
-    covariance of pick noise, regional and cut-offs. The error of the known piece is
-    shared and drops out. Idea: White 1992, White & Yielding 1991, Withjack &
-    Peterson 1993 (through methods.md section 6); the weighting is ours.
+    At each angle one smooth fault is fitted to everything, cut-offs and regionals
+    free within their errors (`JointSystem`). From its misfit that of a fit to one
+    horizon alone is taken, with the known fault down to its cut-off: one horizon
+    predicts a fault at any angle, and what smoothness prefers there is no evidence.
+    The smoothness is that of the best angle (REML), the same at all of them. Idea:
+    White 1992, White & Yielding 1991, Withjack & Peterson 1993 (through methods.md
+    section 6); the weighting is ours.
     """
-    if len(problems) < 2:
-        raise ConstructionError(
-            "one-horizon",
-            "one horizon predicts a fault at any angle: it cannot tell the angle.",
-            problems[0].where if problems else "",
-            "Declare a second horizon with its own cut-offs.",
-        )
-    chi2 = np.full(len(angles), np.inf)
-    for i, angle in enumerate(angles):
-        marches = [_marched(p, angle) for p in problems]
-        if any(m is None for m in marches):
-            continue
-        x = _common(marches)
-        if x is not None:
-            chi2[i] = _disagreement(marches, x)
-    freedom = (len(problems) - 1) * _POINTS - 1
-    return estimate("several horizons, one fault", np.asarray(angles), chi2, freedom)
+    problems = list(problems)
+    require_scipy(problems[0].where if problems else "")
+    if not problems:
+        return unresolved(HORIZONS, "there is no horizon with cut-offs and picks.")
+    if len(problems) == 1 and not has_deep_points(problems[0]):
+        why = "one horizon predicts a fault at any angle, so it cannot tell it."
+        return unresolved(HORIZONS, why)
+    return estimate(HORIZONS, *_Search(problems).run())
 
 
-def _disagreement(marches, x):
-    """Chi-square of predicted faults about their weighted mean."""
-    z = [m.z_at(x) for m in marches]
-    inverse = [np.linalg.inv(_covariance(m, x)) for m in marches]
-    mean = np.linalg.solve(sum(inverse), sum(w @ f for w, f in zip(inverse, z)))
-    return float(sum((f - mean) @ w @ (f - mean) for w, f in zip(inverse, z)))
+def has_deep_points(problem):
+    """Tell whether the fault is known beyond a horizon's hanging-wall cut-off.
+
+    By a tenth of the heave at least: less is the cut-off itself within its error.
+    """
+    fault, hang = problem.fault, problem.separation.hanging_wall.x
+    deep = np.r_[fault.x[: fault.observed], fault.tie_x]
+    return bool((deep > hang + 0.1 * problem.separation.heave).any())
 
 
-def angle_from_ties(problem, tie_x, tie_z, tie_sigma, angles=ANGLES):
-    """Find the angle at which the predicted fault meets deep points on it.
+def angle_from_ties(problem):
+    """Find the angle at which the fault of one horizon meets deep points on it.
 
     Parameters
     ----------
     problem : Problem
-    tie_x, tie_z, tie_sigma : array_like (k,)
-        Points on the fault from seismic or wells, and the sigma of z.
-    angles : ndarray
+        Its known fault holds the deep points.
 
     Returns
     -------
     AngleEstimate
+        Not resolved where no point lies beyond the hanging-wall cut-off.
+
+    Raises
+    ------
+    ConstructionError
+        If scipy is missing.
     """
-    tie_x, tie_z = np.atleast_1d(tie_x).astype(float), np.atleast_1d(tie_z)
-    sigma = np.broadcast_to(np.asarray(tie_sigma, dtype=float), tie_x.shape)
-    marches = [_marched(problem, a) for a in angles]
-    solved = [m for m in marches if m is not None]
-    reach = [
-        (tie_x > max(m.start_x for m in solved))
-        & (tie_x < min(m.x[-1] for m in solved))
-        if solved
-        else np.zeros(len(tie_x), dtype=bool)
-    ][0]
-    if not reach.any():
-        raise ConstructionError(
-            "no-ties",
-            "no deep point lies under the picks beyond the hanging-wall cut-off.",
-            problem.where,
-            "Give deep points there, or extend the horizon.",
-        )
-    x, z, sigma = tie_x[reach], np.asarray(tie_z, dtype=float)[reach], sigma[reach]
-    chi2 = np.full(len(angles), np.inf)
-    for i, m in enumerate(marches):
-        if m is not None:
-            columns = m.errors.at(x, without=("shear angle",))
-            covariance = columns @ columns.T + np.diag(sigma**2)
-            miss = m.z_at(x) - z
-            chi2[i] = miss @ np.linalg.solve(covariance, miss)
-    return estimate("deep points on the fault", np.asarray(angles), chi2, len(x) - 1)
+    if not has_deep_points(problem):
+        why = "no point of the fault is known beyond the hanging-wall cut-off."
+        return unresolved(TIES, why)
+    return replace(angle_from_horizons([problem]), way=TIES)
 
 
-def angle_from_cutoffs(heave, throw, sigma_heave, sigma_throw, angles=ANGLES):
+def angle_from_cutoffs(heave, throw, sigma_heave, sigma_throw, correlation=0.0):
     """Find the angle from the cut-offs of several pre-growth horizons.
 
     Parameters
@@ -292,32 +198,69 @@ def angle_from_cutoffs(heave, throw, sigma_heave, sigma_throw, angles=ANGLES):
     heave, throw : array_like (n,)
         Of horizons that all existed before the fault moved.
     sigma_heave, sigma_throw : float or array_like (n,)
-    angles : ndarray
+    correlation : float or array_like (n,)
+        Of the errors of heave and throw.
 
     Returns
     -------
     AngleEstimate
+        Not resolved for fewer than two horizons, or equal heaves and throws.
 
     Notes
     -----
-    They share one H = heave + throw tan(a), so heave against throw is a straight
-    line of slope -tan(a) (methods.md section 6). Poor where the fault is nearly
-    straight between the cut-offs, for then heave and throw keep one ratio.
+    They share one H = heave + throw tan(a), so heave against throw is a straight line
+    of slope -tan(a) (methods.md section 6). Chi-square is that of the line with errors
+    in both (York et al. 2004), the lowest over H and the true throws: errors of equal
+    size in both then prefer no angle. Poor where the fault is nearly straight between
+    the cut-offs, for then heave and throw keep one ratio.
     """
     heave, throw = np.asarray(heave, dtype=float), np.asarray(throw, dtype=float)
+    require_scipy()
     if len(heave) < 2:
-        raise ConstructionError(
-            "one-horizon", "one pair of cut-offs cannot tell the shear angle."
-        )
-    t = np.tan(np.radians(angles))[:, None]
-    variance = np.asarray(sigma_heave) ** 2 + (t * np.asarray(sigma_throw)) ** 2
-    variance = np.broadcast_to(variance, (len(angles), len(heave)))
+        why = "one pair of cut-offs gives no line of heave against throw."
+        return unresolved(CUTOFFS, why)
+    t = np.tan(np.radians(_EVEN))[:, None]
+    of_heave, of_throw = np.asarray(sigma_heave), t * np.asarray(sigma_throw)
+    both = 2.0 * np.asarray(correlation) * of_heave * of_throw
+    variance = np.broadcast_to(of_heave**2 + of_throw**2 + both, (len(t), len(heave)))
+    variance = np.maximum(variance, (1e-6 * heave.max()) ** 2)
     oblique = heave + t * throw
     mean = (oblique / variance).sum(axis=1) / (1.0 / variance).sum(axis=1)
     chi2 = ((oblique - mean[:, None]) ** 2 / variance).sum(axis=1)
-    # the scale of H grows with the angle, so its variance enters the likelihood
-    chi2 = chi2 + np.log(variance).sum(axis=1) - np.log(variance).sum(axis=1).min()
-    return estimate("cut-offs of pre-growth horizons", angles, chi2, len(heave) - 2)
+    return estimate(CUTOFFS, _EVEN, chi2, len(heave) - 2)
+
+
+def angle_from_separations(separations):
+    """Find the angle from measured cut-offs of pre-growth horizons.
+
+    Parameters
+    ----------
+    separations : sequence of Separation
+
+    Returns
+    -------
+    AngleEstimate
+        As `angle_from_cutoffs`; the errors of cut-offs that were found slide along
+        the fault, so that heave and throw grow together.
+    """
+    errors = [_heave_throw_errors(s) for s in separations]
+    of_heave, of_throw, both = np.array(errors).reshape(-1, 3).T
+    return angle_from_cutoffs(
+        [s.heave for s in separations],
+        [s.throw for s in separations],
+        of_heave,
+        of_throw,
+        both,
+    )
+
+
+def _heave_throw_errors(separation):
+    """Give standard deviations of heave and throw, and their correlation."""
+    cuts = (separation.footwall, separation.hanging_wall)
+    of_heave = np.hypot(*(c.sigma_x for c in cuts))
+    of_throw = np.hypot(*(c.sigma_z for c in cuts))
+    together = sum(c.sigma_x * c.sigma_z for c in cuts if c.slides)
+    return of_heave, of_throw, together / max(of_heave * of_throw, 1e-300)
 
 
 def angle_from_area(
@@ -333,7 +276,7 @@ def angle_from_area(
         Of the detachment below the level regional.
     heave, throw : float
     sigma_area, sigma_depth, sigma_cutoff : float
-        One standard deviation each; `sigma_cutoff` of heave and throw.
+        One standard deviation each; `sigma_cutoff` of heave and of throw.
 
     Returns
     -------
@@ -341,46 +284,92 @@ def angle_from_area(
 
     Notes
     -----
-    tan(a) = (A/d - heave)/throw (methods.md section 6): A/d is the displacement on
-    the detachment, which is the oblique heave. Needs a level regional and detachment.
+    A = d (heave + throw tan(a)), so tan(a) = (A/d - heave)/throw (methods.md section
+    6). Needs a level regional and detachment. `angle_from_detachment` takes a section
+    as it is.
     """
-    tangent = (area / detachment_depth - heave) / throw
-    along = area / detachment_depth
-    relative = np.hypot(sigma_area / area, sigma_depth / detachment_depth)
-    variance = (along * relative) ** 2 + sigma_cutoff**2 * (1.0 + tangent**2)
-    sigma = np.sqrt(variance) / throw
-    chi2 = ((np.tan(np.radians(ANGLES)) - tangent) / sigma) ** 2
-    return estimate("known detachment and lost area", ANGLES, chi2, 0)
+    t = np.tan(np.radians(_EVEN))
+    oblique = heave + throw * t
+    miss = area - detachment_depth * oblique
+    variance = sigma_area**2 + (oblique * sigma_depth) ** 2
+    variance = variance + (detachment_depth * sigma_cutoff) ** 2 * (1.0 + t**2)
+    return estimate(AREA, _EVEN, miss**2 / variance, 0.0)
 
 
-def joint_angle(estimates):
-    """Join the curves of several sections or ways into one angle for the fault.
+def angle_from_detachment(problem, detachment_z, detachment_sigma):
+    """Find the angle at which a horizon's lost area reaches a known detachment.
 
     Parameters
     ----------
-    estimates : sequence of AngleEstimate
-        Over the same angles, from data with independent errors.
+    problem : Problem
+        Its shear angle does not count.
+    detachment_z, detachment_sigma : float
+        Elevation of the detachment and one standard deviation.
 
     Returns
     -------
     AngleEstimate
+        Not resolved where A/H has not levelled off at the end of the picks: the fault
+        under the last strip is not the detachment yet.
+
+    Notes
+    -----
+    At each angle the area up to the last shear line is A = H (R - z_det), R the mean
+    of the regional over the last strip (eq. 8a of methods.md). The misfit of that
+    carries the errors of picks, known fault, regional and cut-offs through both sides.
     """
-    usable = [e for e in estimates if np.isfinite(e.chi2).any()]
-    if not usable:
-        raise ConstructionError("no-estimate", "no section gives a misfit curve.")
-    chi2 = sum(e.chi2 for e in usable)
-    freedom = sum(e.freedom + 1 for e in usable) - 1
-    return estimate(f"{len(usable)} jointly", usable[0].angles, chi2, freedom)
+    require_scipy(problem.where)
+
+    def value(angle):
+        return _area_misfit(problem, angle, detachment_z, detachment_sigma)
+
+    tried = {a: value(a) for a in ANGLES.tolist()}
+    angles, chi2 = refined(value, tried)
+    found = estimate(AREA, angles, chi2, 0.0)
+    if found.best is None:
+        return found
+    course = area_convergence(_at_angle(problem, found.best))
+    if course.levelled:
+        return found
+    return replace(found, resolved=False, text=f"Not resolved: {course.text}")
 
 
-def horizon_problem(where, separation, fault, bed, regional, options):
-    """Write one horizon of a section as a problem for the calibration."""
-    return Problem(
-        where,
-        separation,
-        fault,
-        bed_from(separation.hanging_wall, bed),
-        regional,
-        ConstantHeave(0.0),
-        options,
-    )
+def _at_angle(problem, angle):
+    return replace(problem, model=ConstantHeave(float(angle)))
+
+
+def _possible(problems, angle):
+    """Tell whether cut-offs and known fault have a solution at an angle."""
+    try:
+        for problem in problems:
+            check_problem(_at_angle(problem, angle))
+    except GeomcoreError:
+        return False
+    return True
+
+
+def _area_misfit(problem, angle, z, sigma):
+    """Misfit of A = H (R - z_det) in units of its error, squared."""
+    if not _possible([problem], angle):
+        return np.inf
+    problem = _at_angle(problem, angle)
+
+    def miss(trial):
+        lost = lost_area(trial)
+        return lost.total - lost.displacement * (lost.regional_z - z)
+
+    names, root = parameter_roots(problem)
+    steps = np.maximum(np.abs(root).sum(axis=1), 1e-3)
+    try:
+        effect = [
+            (miss(moved_problem(problem, n, s)) - miss(moved_problem(problem, n, -s)))
+            / (2.0 * s)
+            for n, s in zip(names, steps)
+        ]
+        exact = replace(problem.regional, covariance=(0.0, 0.0, 0.0))
+        of_picks = lost_area(replace(problem, regional=exact)).sigma
+        variance = of_picks**2 + ((np.array(effect) @ root) ** 2).sum()
+        variance += (problem.oblique_heave * sigma) ** 2
+        return float(miss(problem) ** 2 / variance)
+    except GeomcoreError:
+        return np.inf

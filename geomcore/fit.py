@@ -19,6 +19,7 @@ __all__ = [
     "PickResiduals",
     "assemble",
     "best_smoothness",
+    "golden_maximum",
     "solve_fit",
     "straight_evidence",
 ]
@@ -252,7 +253,7 @@ def _evidence(log_weight, normal, penalty, right, square, n):
     return -0.5 * (misfit + log_det - (n - 2) * log_weight)
 
 
-def best_smoothness(normal, penalty, right, square, n, near=None):
+def best_smoothness(normal, penalty, right, square, n):
     """Give the log weight of largest marginal likelihood: a scan, then refined.
 
     Parameters
@@ -264,8 +265,6 @@ def best_smoothness(normal, penalty, right, square, n, near=None):
         Sum of squares of the data.
     n : int
         Number of nodes the penalty acts on.
-    near : float, optional
-        Log weight of a like system; only its neighbourhood is searched.
     """
 
     def value(log_weight):
@@ -274,17 +273,15 @@ def best_smoothness(normal, penalty, right, square, n, near=None):
         except np.linalg.LinAlgError:
             return -np.inf
 
-    if near is not None:
-        return _golden(value, near - 2.0, near + 2.0, 8)
     # the scale at which data and curvature weigh the same
     scale = np.log(np.trace(normal) / np.trace(penalty))
     grid = scale + np.arange(-12.0, 22.1, 1.5)
     best = int(np.argmax([value(w) for w in grid]))
     low, high = grid[max(best - 1, 0)], grid[min(best + 1, len(grid) - 1)]
-    return _golden(value, low, high, 14)
+    return golden_maximum(value, low, high, 14)
 
 
-def _golden(value, low, high, steps):
+def golden_maximum(value, low, high, steps):
     """Give the place of the maximum by golden section."""
     golden = 0.5 * (np.sqrt(5.0) - 1.0)
     a, b = high - golden * (high - low), low + golden * (high - low)

@@ -1,245 +1,344 @@
 """One fault under several horizons, cut-offs and regionals free within their errors.
 
-The system of the fit is linear in the fault only. Here the cut-offs and regionals of
-every horizon are unknowns too, held by their stated errors, and the system is solved
-by Gauss-Newton steps. Its marginal likelihood says how well a shear angle suits all
-the data together.
+The fault is a smooth curve z(x) in the section itself, the same unknowns whatever the
+shear angle, so that angles can be compared by how probable they make the data.
 """
 
-from dataclasses import dataclass
+from copy import copy
+from dataclasses import dataclass, replace
 
 import numpy as np
 
-from .fit import whitened
-from .problem import bed_in_frame
-from .uncertainty import moved_problem, parameter_roots
+from .fit import golden_maximum
+from .jointrows import HorizonData, LeaningFault
+from .kinematics import ConstantHeave
+from .problem import solve_march
+from .splines import EvenSplines
 
-__all__ = ["JointFit", "joint_fit"]
+__all__ = ["JointFit", "JointSystem"]
 
-#: Nodes in the smallest oblique heave, and the most nodes altogether.
-_NODES = 10
-_MOST = 160
-#: Standard deviation of a cut-off off the fault, as a share of the throw.
-_EXACT = 3e-3
+#: Knots in the smallest heave, and the most pieces altogether.
+_KNOTS, _MOST = 3.0, 120
+#: Least standard deviation of any datum, as a share of the throw: what a curve between
+#: knots may miss a bend by.
+_LEAST = 1e-3
+#: Gauss-Newton steps at most. They end where the misfit is going to lessen by no more
+#: than this, or this share of it.
+_STEPS, _SMALL, _SHARE = 15, 0.02, 1e-4
 
 
 @dataclass(frozen=True, eq=False)
 class JointFit:
-    """Solution at one shear angle.
+    """The most probable fault at one shear angle.
 
     Parameters
     ----------
-    u, z : ndarray (n,)
-        Fault along the shear lines.
+    angle : float
     deviance : float
-        Minus twice the log marginal likelihood, up to a constant.
+        Minus twice the log marginal likelihood of the data, up to a constant.
+    misfit : float
+        Of data and curvature together; at one weight of the curvature its differences
+        between angles say how well they suit the data.
     chi2 : float
-        Misfit of data, parameters' pulls included.
+        Misfit of the data in units of their errors, pulls of the regionals included.
     rows : int
         Number of data.
-    pulls : ndarray (k,)
-        Shift of each parameter in units of its sigma.
+    log_weight : float
+        Logarithm of the weight of the squared curvature.
+    state : tuple
+        Coefficients of the curve; for each horizon its own unknowns and its bed.
+    linear : _Linear
+        The system linearised there.
     """
 
-    u: np.ndarray
-    z: np.ndarray
+    angle: float
     deviance: float
+    misfit: float
     chi2: float
     rows: int
-    pulls: np.ndarray
+    log_weight: float
+    state: tuple
+    linear: object
+
+    @property
+    def freedom(self):
+        """Number of data less the unknowns they decide."""
+        return self.rows - self.linear.decided(self.log_weight)
+
+    def of_one(self, number):
+        """Give the same fault with the unknowns of one horizon only."""
+        coefficients, own, beds = self.state
+        return replace(self, state=(coefficients, own[[number]], [beds[number]]))
 
 
-class _Horizon:
-    """One horizon at one angle: its picks in the frame, its parameters."""
+@dataclass(frozen=True, eq=False)
+class _Linear:
+    """The system linearised at a state, with unit errors.
 
-    def __init__(self, problem):
-        self.problem = problem
-        bed = bed_in_frame(problem)
-        least = 1e-4 * problem.separation.throw
-        self.u, self.z = bed.x[1:], bed.z[1:]
-        self.sigma = np.maximum(bed.sigma[1:], least)
-        self.correlation = bed.correlation[1:]
-        self.exact = _EXACT * problem.separation.throw
-        self.names, self.root = parameter_roots(problem)
+    Parameters
+    ----------
+    square : float
+        Sum of squares of residuals and pulls.
+    normal, gradient : ndarray
+        Normal matrix, and half the gradient of `square`.
+    coefficients : ndarray
+        Of the fault, at the state.
+    bent : ndarray
+        Matrix of the squared curvature.
+    """
 
-    def cutoff_errors(self):
-        """Give how far in z the two cut-offs may lie off the fault."""
-        separation, fault = self.problem.separation, self.problem.fault
-        cuts = (separation.footwall, separation.hanging_wall)
-        steep = [abs(float(fault.slope_at(c.x))) for c in cuts]
-        return np.array([c.sigma_z + s * c.sigma_x for c, s in zip(cuts, steep)])
+    square: float
+    normal: np.ndarray
+    gradient: np.ndarray
+    coefficients: np.ndarray
+    bent: np.ndarray
 
-    def moved(self, pulls):
-        """Give the problem with its parameters shifted by pulls (unit sigmas)."""
-        problem = self.problem
-        for name, shift in zip(self.names, self.root @ pulls):
-            if shift != 0.0:
-                problem = moved_problem(problem, name, shift)
-        return problem
+    def solved(self, log_weight):
+        """Give deviance, misfit, and the step to them; None if singular."""
+        import scipy.linalg
 
-    def residual(self, pulls, u, z):
-        """Rows: bed picks, then the two cut-offs on the fault; unit errors."""
-        problem = self.moved(pulls)
-        heave, tan = problem.oblique_heave, problem.tan
-        modelled = np.interp(self.u, u, z) - np.interp(self.u - heave, u, z)
-        miss = modelled + problem.regional_at(self.u - heave) - self.z
-        bed = whitened(miss, self.u, self.sigma, self.correlation)
-        cuts = (problem.separation.footwall, problem.separation.hanging_wall)
-        on_fault = [(np.interp(c.x - c.z * tan, u, z) - c.z) / self.exact for c in cuts]
-        return np.concatenate([bed, on_fault])
+        n, weight = len(self.coefficients), np.exp(log_weight)
+        full, half = self.normal.copy(), self.gradient.copy()
+        full[:n, :n] += weight * self.bent
+        bend = weight * (self.bent @ self.coefficients)
+        half[:n] += bend
+        try:
+            factor = scipy.linalg.cho_factor(full, lower=True, check_finite=False)
+        except np.linalg.LinAlgError:
+            return None
+        step = -scipy.linalg.cho_solve(factor, half, check_finite=False)
+        decrease = float(-half @ step)
+        misfit = self.square + self.coefficients @ bend - decrease
+        log_det = 2.0 * np.log(np.diag(factor[0])).sum()
+        deviance = misfit + log_det - (n - 2) * log_weight
+        return float(deviance), float(misfit), step, decrease
 
-    def rows(self, pulls, u):
-        """Give the derivative of the residual with the fault's nodes."""
-        problem = self.moved(pulls)
-        heave, tan = problem.oblique_heave, problem.tan
-        beds = _hats(u, self.u) - _hats(u, self.u - heave)
-        beds = whitened(beds, self.u, self.sigma, self.correlation)
-        cuts = (problem.separation.footwall, problem.separation.hanging_wall)
-        at = np.array([c.x - c.z * tan for c in cuts])
-        return np.vstack([beds, _hats(u, at) / self.exact])
+    def best_weight(self, near=None):
+        """Give the log weight of the curvature of largest marginal likelihood."""
 
+        def value(log_weight):
+            found = self.solved(log_weight)
+            return -np.inf if found is None else -found[0]
 
-def _hats(u, at):
-    step = u[1] - u[0]
-    j = np.clip(np.floor((at - u[0]) / step).astype(int), 0, len(u) - 2)
-    f = np.clip((at - u[j]) / step, 0.0, 1.0)
-    rows = np.zeros((len(at), len(u)))
-    k = np.arange(len(at))
-    rows[k, j], rows[k, j + 1] = 1.0 - f, f
-    return rows
+        if near is not None:
+            return golden_maximum(value, near - 1.2, near + 1.2, 5)
+        n = len(self.coefficients)
+        scale = np.log(np.trace(self.normal[:n, :n]) / np.trace(self.bent))
+        grid = scale + np.arange(-12.0, 22.1, 2.0)
+        best = int(np.argmax([value(w) for w in grid]))
+        low, high = grid[max(best - 1, 0)], grid[min(best + 1, len(grid) - 1)]
+        return golden_maximum(value, low, high, 8)
 
-
-def _fault_rows(fault, tan, u, least):
-    """Known fault points and deep ties as rows, their right sides apart."""
-    shorter = 1.0 - fault.slope_at(fault.x) * tan
-    known = np.maximum(fault.sigma / shorter, least)
-    at = np.r_[fault.x - fault.z * tan, fault.tie_x - fault.tie_z * tan]
-    z = np.r_[fault.z, fault.tie_z]
-    sigma = np.r_[known, np.maximum(fault.tie_sigma, least)]
-    inside = (at >= u[0]) & (at <= u[-1])
-    rows = _hats(u, at[inside]) / sigma[inside, None]
-    return rows, z[inside] / sigma[inside]
+    def decided(self, log_weight):
+        """Give how many unknowns the data decide rather than the curvature."""
+        n, full = len(self.coefficients), self.normal.copy()
+        full[:n, :n] += np.exp(log_weight) * self.bent
+        return float(np.trace(np.linalg.solve(full, self.normal)))
 
 
-def _grid(horizons):
-    """Nodes from the highest footwall cut-off to the last pick, and a margin."""
-    heave = min(h.problem.oblique_heave for h in horizons)
-    tan = horizons[0].problem.tan
-    feet = [h.problem.separation.footwall for h in horizons]
-    margin = 0.3 * heave
-    low = min(f.x - f.z * tan for f in feet) - margin
-    high = max(h.u[-1] for h in horizons) + margin
-    step = max(heave / _NODES, (high - low) / _MOST)
-    return low + step * np.arange(int(np.ceil((high - low) / step)) + 2)
-
-
-def joint_fit(problems, smooth=None, steps=4):
-    """Fit one fault to several horizons at the shear angle of their model.
+class JointSystem:
+    """All data of one section that bear on one fault.
 
     Parameters
     ----------
     problems : sequence of Problem
-        One for each horizon, all with the same model and known fault.
-    smooth : float, optional
-        Log weight of the curvature rows of a like system, to start from.
-    steps : int
-        Gauss-Newton steps.
-
-    Returns
-    -------
-    JointFit
-    smooth : float
-        Log weight of the curvature rows of largest marginal likelihood.
+        One for each horizon, on one known fault. Their shear angles do not count.
 
     Notes
     -----
-    Unknowns are the fault's nodes and, for each horizon, its regional and cut-offs
-    in units of their stated errors; the latter have unit normal priors. The marginal
-    likelihood is that of the linearised system at the solution (Laplace).
+    Unknowns are the coefficients of the fault and those of each horizon
+    (`HorizonData`). Known fault points and deep ties are data like the picks. Before
+    the data a smooth fault is more probable: its squared curvature has a weight found
+    by marginal likelihood (REML) at each angle. The deviance is that of the system
+    linearised at its solution (Laplace).
     """
-    from .fit import best_smoothness
 
-    horizons = [_Horizon(p) for p in problems]
-    u = _grid(horizons)
-    fault, tan = problems[0].fault, problems[0].tan
-    least = min(h.exact for h in horizons)
-    known, known_right = _fault_rows(fault, tan, u, least)
-    curvature = np.diff(np.eye(len(u)), n=2, axis=0) / (u[1] - u[0]) ** 1.5
-    penalty = curvature.T @ curvature
-    counts = [len(h.names) for h in horizons]
-    pulls = [np.zeros(k) for k in counts]
-    z, smooth = _first_guess(horizons, u, known, known_right, penalty, smooth)
-    for step in range(steps):
-        matrix, right = _linearised(horizons, pulls, u, z, known, known_right)
-        normal, target, square = matrix.T @ matrix, matrix.T @ right, right @ right
-        prior = np.zeros_like(normal)
-        prior[len(u) :, len(u) :] = np.eye(sum(counts))
-        full = np.zeros_like(normal)
-        full[: len(u), : len(u)] = penalty
-        if step > 0:
-            smooth = best_smoothness(
-                normal + prior, full, target, square, len(u), near=smooth
-            )
-        weight = np.exp(smooth)
-        solution, log_det = _solved(normal + prior + weight * full, target)
-        z, shift = solution[: len(u)], solution[len(u) :]
-        pulls = np.split(shift, np.cumsum(counts)[:-1])
-    residual = [h.residual(p, u, z) for h, p in zip(horizons, pulls)]
-    chi2 = float(sum((r**2).sum() for r in residual) + (shift**2).sum())
-    chi2 += float(((known @ z - known_right) ** 2).sum())
-    rough = float(weight * z @ penalty @ z)
-    # grids of different angles have different lengths: their constant counts here
-    _, of_curvature = np.linalg.slogdet(curvature @ curvature.T)
-    deviance = chi2 + rough + log_det - (len(u) - 2) * np.log(weight) - of_curvature
-    rows = len(known) + sum(len(r) for r in residual)
-    return JointFit(u, z, deviance, chi2, rows, shift), np.log(weight)
+    def __init__(self, problems):
+        throw = max(p.separation.throw for p in problems)
+        self._least = _LEAST * throw
+        self.horizons = [HorizonData(p, self._least) for p in problems]
+        upright = [replace(p, model=ConstantHeave(0.0)) for p in problems]
+        widest = max(upright, key=lambda p: p.separation.heave)
+        march = solve_march(widest)
+        self.splines = _reach(problems, march)
+        self.bent = self.splines.roughness()
+        self.points = _fault_points(widest.fault)
+        self._know(*self.points)
+        own = np.array([h.start for h in self.horizons])
+        guess = self.splines.following(lambda x: _guess(widest, march, x))
+        self.start = guess, own, [h.z for h in self.horizons]
+
+    def _know(self, x, z, sigma):
+        """Take the points of the fault within reach as data."""
+        inside = (x >= self.splines.low) & (x <= self.splines.high)
+        x, z, sigma = x[inside], z[inside], np.maximum(sigma[inside], self._least)
+        self.known, self.known_z = self.splines.rows(x) / sigma[:, None], z / sigma
+
+    def of_one(self, number, hang_x):
+        """Give the system of one horizon and the known fault down to its cut-off.
+
+        Parameters
+        ----------
+        number : int
+            Of the horizon.
+        hang_x : float
+            x of its hanging-wall cut-off.
+        """
+        one = copy(self)
+        one.horizons = [self.horizons[number]]
+        x, z, sigma = self.points
+        above = x <= hang_x
+        one._know(x[above], z[above], sigma[above])
+        guess, own, beds = self.start
+        one.start = guess, own[[number]], [beds[number]]
+        return one
+
+    def solve(self, angle, near=None, log_weight=None):
+        """Find the most probable fault at a shear angle.
+
+        Parameters
+        ----------
+        angle : float
+            Degrees from the vertical, positive antithetic.
+        near : JointFit, optional
+            Of a neighbouring angle, to start from.
+        log_weight : float, optional
+            Of the squared curvature; that of largest marginal likelihood if not given.
+
+        Returns
+        -------
+        JointFit or None
+            None where the construction has no solution, or none was found.
+        """
+        tan = float(np.tan(np.radians(angle)))
+        state = near.state if near else self.start
+        fixed = log_weight is not None
+        if not fixed:
+            log_weight = near.log_weight if near else None
+        now = self._linearised(state, tan)
+        if now is None:
+            return None
+        for step in range(_STEPS):
+            state, linear, rows = now
+            if step < 2 and not fixed:
+                log_weight = linear.best_weight(log_weight)
+            found = linear.solved(log_weight)
+            if found is None:
+                return None
+            deviance, misfit, change, decrease = found
+            if decrease < _SMALL + _SHARE * linear.square:
+                found = deviance, misfit, linear.square, rows, log_weight
+                return JointFit(angle, *found, state, linear)
+            now = self._moved(state, tan, change, decrease, log_weight)
+            if now is None:
+                return None
+        return None
+
+    def _compared(self, state, tan, rows):
+        """Compare all horizons with a fault; None without a solution."""
+        coefficients, own, beds = state
+        fault = LeaningFault(self.splines, coefficients, tan)
+        if not fault.single:
+            return None
+        parts = []
+        for horizon, unknowns, bed in zip(self.horizons, own, beds):
+            parts.append(horizon.evaluate(fault, unknowns, bed, rows))
+            if parts[-1] is None:
+                return None
+        return parts
+
+    def _square(self, state, parts):
+        """Sum of squares of residuals and pulls."""
+        coefficients, own, _ = state
+        known = self.known @ coefficients - self.known_z
+        square = known @ known + (own[:, :2] ** 2).sum()
+        return float(square + sum(p[0] @ p[0] for p in parts))
+
+    def _linearised(self, state, tan):
+        """Linearise at a state; state with its beds, system, number of data."""
+        parts = self._compared(state, tan, rows=True)
+        if parts is None:
+            return None
+        coefficients, own, _ = state
+        n, size = len(coefficients), len(coefficients) + own.size
+        normal, gradient = np.zeros((size, size)), np.zeros(size)
+        normal[:n, :n] = self.known.T @ self.known
+        gradient[:n] = self.known.T @ (self.known @ coefficients - self.known_z)
+        for k, (residual, by_fault, by_own, _) in enumerate(parts):
+            at = slice(n + 3 * k, n + 3 * k + 3)
+            normal[:n, :n] += by_fault.T @ by_fault
+            normal[:n, at] = by_fault.T @ by_own
+            normal[at, :n] = normal[:n, at].T
+            # pulls have unit errors of their own
+            normal[at, at] = by_own.T @ by_own + np.diag([1.0, 1.0, 0.0])
+            gradient[:n] += by_fault.T @ residual
+            gradient[at] = by_own.T @ residual + own[k] * [1.0, 1.0, 0.0]
+        square = self._square(state, parts)
+        linear = _Linear(square, normal, gradient, coefficients, self.bent)
+        rows = len(self.known_z) + sum(len(p[0]) + 2 for p in parts)
+        return (coefficients, own, [p[3] for p in parts]), linear, rows
+
+    def _moved(self, state, tan, change, decrease, log_weight):
+        """Go the step, or the part of it that lessens the misfit; None if none does."""
+        before = self._misfit(state, tan, log_weight)[0]
+        share, best = 1.0, None
+        for _ in range(5):
+            further = _stepped(state, share * change)
+            after, parts = self._misfit(further, tan, log_weight)
+            if after < (before + _SMALL if best is None else best[0]):
+                best = after, further, parts
+            if after < before - 0.75 * share * (2.0 - share) * decrease:
+                break
+            # the lowest point of the parabola through what is known of the way
+            bend = (after - before) / share**2 + 2.0 * decrease / share
+            shorter = decrease / bend if np.isfinite(bend) else 0.2 * share
+            if best is not None and shorter > 0.8 * share:
+                break
+            share = float(np.clip(shorter, 0.1 * share, 0.7 * share))
+        if best is None:
+            return None
+        _, (coefficients, own, _), parts = best
+        return self._linearised((coefficients, own, [p[3] for p in parts]), tan)
+
+    def _misfit(self, state, tan, log_weight):
+        """Misfit of data and curvature, infinite without a solution, and its parts."""
+        parts = self._compared(state, tan, rows=False)
+        if parts is None:
+            return np.inf, None
+        coefficients = state[0]
+        rough = np.exp(log_weight) * (coefficients @ self.bent @ coefficients)
+        return self._square(state, parts) + rough, parts
 
 
-def _solved(matrix, right):
-    import scipy.linalg
-
-    factor = scipy.linalg.cho_factor(matrix, lower=True)
-    log_det = 2.0 * np.log(np.diag(factor[0])).sum()
-    return scipy.linalg.cho_solve(factor, right), log_det
+def _stepped(state, change):
+    coefficients, own, beds = state
+    n = len(coefficients)
+    return coefficients + change[:n], own + change[n:].reshape(own.shape), beds
 
 
-def _first_guess(horizons, u, known, known_right, penalty, smooth):
-    """Solve the linear system with the parameters as stated; fault and smoothness."""
-    from .fit import best_smoothness
-
-    matrix, right = [known], [known_right]
-    for h in horizons:
-        zero = np.zeros(len(h.names))
-        rows, miss = h.rows(zero, u), h.residual(zero, u, np.zeros(len(u)))
-        # cut-offs off the known fault by their errors must not bend the first guess
-        loose = np.ones(len(miss))
-        loose[-2:] = h.exact / np.hypot(h.exact, h.cutoff_errors())
-        matrix.append(rows * loose[:, None])
-        right.append(-miss * loose)
-    matrix, right = np.vstack(matrix), np.concatenate(right)
-    normal, target = matrix.T @ matrix, matrix.T @ right
-    square = float(right @ right)
-    smooth = best_smoothness(normal, penalty, target, square, len(u), near=smooth)
-    return _solved(normal + np.exp(smooth) * penalty, target)[0], smooth
+def _fault_points(fault):
+    """Observed points of the known piece and deep ties, with their errors."""
+    own = slice(None, fault.observed)
+    x, z = np.r_[fault.x[own], fault.tie_x], np.r_[fault.z[own], fault.tie_z]
+    return x, z, np.r_[np.full(len(fault.x[own]), fault.sigma), fault.tie_sigma]
 
 
-def _linearised(horizons, pulls, u, z, known, known_right):
-    """Rows against nodes and parameters, so that ``rows @ (z, pulls) = right``."""
-    total = sum(len(p) for p in pulls)
-    matrix = [np.hstack([known, np.zeros((len(known), total))])]
-    right = [known_right]
-    first = 0
-    for h, p in zip(horizons, pulls):
-        base = h.residual(p, u, z)
-        nodes = h.rows(p, u)
-        params = np.zeros((len(base), total))
-        for k in range(len(p)):
-            step = np.zeros(len(p))
-            step[k] = 0.25
-            up, down = h.residual(p + step, u, z), h.residual(p - step, u, z)
-            params[:, first + k] = (up - down) / 0.5
-        own = params[:, first : first + len(p)]
-        matrix.append(np.hstack([nodes, params]))
-        right.append(nodes @ z + own @ p - base)
-        first += len(p)
-    return np.vstack(matrix), np.concatenate(right)
+def _guess(problem, march, x):
+    """Follow the known fault down to the hanging-wall cut-off, then vertical shear."""
+    hang = problem.separation.hanging_wall.x
+    return np.where(x > hang, np.interp(x, march.u, march.z), problem.fault.z_at(x))
+
+
+def _reach(problems, march):
+    """Knots from above the highest footwall cut-off to under the last pick.
+
+    Under synthetic shear that lies farther out than the pick, by the depth of the
+    fault there.
+    """
+    heaves = [p.separation.heave for p in problems]
+    low = min(p.separation.footwall.x for p in problems) - 0.5 * max(heaves)
+    last = max(float(p.bed.x[-1]) for p in problems)
+    deep = max(float(march.bed_z[-1] - march.z[-1]), 0.0)
+    high = last + 0.7 * deep
+    step = max(min(heaves) / _KNOTS, (high - low) / _MOST)
+    return EvenSplines.over(low, high, step)
