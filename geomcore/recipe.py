@@ -188,10 +188,17 @@ class HorizonSpec:
     offset : float, optional
         Elevation of its regional above that of the construction's horizon
         (negative below); its own footwall picks are used if not given.
+    slip : float, optional
+        Predict it by slip lines parallel to the fault with this slip, not by the
+        model that made the fault.
     """
 
     name: str
     offset: Optional[float] = None
+    slip: Optional[float] = None
+
+    def __post_init__(self):
+        _more_than(0, f"further horizon {self.name}", slip=self.slip)
 
 
 @dataclass(frozen=True)

@@ -134,14 +134,16 @@ def slip_line_horizon(fault_x, fault_z, regional, slip, x_end, samples=200):
 
     Returns
     -------
-    Profile
-        The deformed horizon as far as it is single-valued and the fault reaches.
+    horizon : Profile
+        Deformed, as far as it is single-valued and the fault reaches.
+    footwall : tuple (x, z)
+        Its footwall cut-off.
 
     Raises
     ------
     ConstructionError
-        If the regional does not meet the fault, or the horizon lies beyond the
-        fault's radius of curvature.
+        If the regional does not meet the fault, the horizon lies beyond the fault's
+        radius of curvature, or the fault ends before the slip is spent.
     """
     gap = np.asarray(fault_z) - regional(np.asarray(fault_x))
     hit = np.flatnonzero((gap[:-1] >= 0) & (gap[1:] < 0))
@@ -156,5 +158,10 @@ def slip_line_horizon(fault_x, fault_z, regional, slip, x_end, samples=200):
     moved = slide_along(fault_x, fault_z, np.column_stack([x, regional(x)]), slip)
     known = np.isfinite(moved[:, 0])
     moved = moved[known]
+    if len(moved) < 2:
+        raise ConstructionError(
+            "fault-too-short", "the fault ends before the slip along it is spent."
+        )
     keep = np.r_[True, np.diff(moved[:, 0]) > 0]
-    return Profile(moved[keep, 0], moved[keep, 1], np.zeros(int(keep.sum())))
+    horizon = Profile(moved[keep, 0], moved[keep, 1], np.zeros(int(keep.sum())))
+    return horizon, (float(foot), float(regional(foot)))

@@ -45,6 +45,7 @@ from .profile import (
 )
 from .recipe import FORMAT, HorizonSpec, Study
 from .section import OBLIQUITY_WARNING, SectionFrame, parallel_sections
+from .sliplines import slip_line_horizon
 from .sources import Features, Grid, vertical_factor
 from .subsidiary import leave_out_near_subsidiaries, measure_subsidiaries
 from .transport import resolve_transport, trace_parts
@@ -839,33 +840,19 @@ def horizon_from_trace(spec, picks, given):
     """
     regional = _regional_of(spec, picks, given)
     model = given.model or ConstantHeave(given.shear_angle)
-    if isinstance(model, ConstantBedLength) and spec.name != given.horizon:
-        raise StudyError(
-            "further-horizon-model",
-            f"{model.label} gives each horizon a displacement of its own, so further "
-            "horizons do not follow from the fault.",
-            f"horizon {spec.name}",
-            "Use constant heave or constant slip.",
-        )
-    profile, foot, hang, hidden = forward_past_subsidiaries(
-        given.x,
-        given.z,
-        regional,
-        given.oblique_heave,
-        model,
-        given.subsidiaries,
-        given.compaction,
-    )
+    profile, foot, hang, hidden = _forward(spec, given, regional, model)
     bed = profile_from_picks(picks.of("horizon", spec.name, "hanging wall"))
     miss = bed.z - profile(bed.x)
     u = to_shear_frame(bed.x, bed.z, model.shear_angle)
     for start, end in hidden:
         miss[(u > start) & (u < end)] = np.nan
     miss = miss[np.isfinite(miss)]
-    if spec.name == given.horizon:
+    if spec.name == given.horizon and spec.slip is None:
         note, miss = "the horizon made the fault: its misfit is an identity", miss[:0]
     elif not len(miss):
         note = "no picks of this horizon in the hanging wall"
+    elif spec.slip is not None:
+        note = f"{len(miss)} picks against slip lines with a slip of {spec.slip:g}"
     else:
         note = f"{len(miss)} picks not used for the fault"
     return HorizonPrediction(
@@ -878,6 +865,32 @@ def horizon_from_trace(spec, picks, given):
         float(np.abs(miss).max()) if len(miss) else None,
         len(miss),
         note,
+    )
+
+
+def _forward(spec, given, regional, model):
+    """Predict by the model that made the fault, or by slip lines where asked for."""
+    if spec.slip is not None:
+        profile, foot = slip_line_horizon(
+            given.x, given.z, regional, spec.slip, float(given.x[-1])
+        )
+        return profile, foot, (float(profile.x[0]), float(profile.z[0])), ()
+    if isinstance(model, ConstantBedLength) and spec.name != given.horizon:
+        raise StudyError(
+            "further-horizon-model",
+            f"{model.label} gives each horizon a displacement of its own, so further "
+            "horizons do not follow from the fault.",
+            f"horizon {spec.name}",
+            "Use constant heave or constant slip.",
+        )
+    return forward_past_subsidiaries(
+        given.x,
+        given.z,
+        regional,
+        given.oblique_heave,
+        model,
+        given.subsidiaries,
+        given.compaction,
     )
 
 

@@ -600,6 +600,16 @@ _DECLARED = (
         "takes the horizon's own footwall picks.",
         optional=True,
     ),
+    Parameter(
+        "SLIP",
+        "number",
+        "Slip along lines parallel to the fault",
+        "If given, the horizons are predicted by slip lines parallel to the fault with "
+        "this slip, not by constant heave. Compare their misfits.",
+        unit=_LENGTH,
+        least=0.0,
+        optional=True,
+    ),
     # ---- study and outputs --------------------------------------------------------
     Parameter(
         "STUDY",

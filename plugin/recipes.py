@@ -454,7 +454,7 @@ def names_in(text):
     return tuple(name.strip() for name in text.split(";") if name.strip())
 
 
-def further_horizons(names, offsets):
+def further_horizons(names, offsets, slip=None):
     """Pair the names of further horizons with their offsets.
 
     Parameters
@@ -462,6 +462,8 @@ def further_horizons(names, offsets):
     names, offsets : str
         Separated by semicolons; an empty place among the offsets leaves that
         horizon to its own footwall picks.
+    slip : float, optional
+        Predict them by slip lines with this slip.
 
     Returns
     -------
@@ -492,7 +494,7 @@ def further_horizons(names, offsets):
             "Give one for each, separated by semicolons.",
         )
     places += [""] * (len(names) - len(places))
-    return tuple(HorizonSpec(n, _offset(text)) for n, text in zip(names, places))
+    return tuple(HorizonSpec(n, _offset(text), slip) for n, text in zip(names, places))
 
 
 def _offset(text):

@@ -140,7 +140,7 @@ def slip_picture():
         way = np.array([slide_along(x, z, [start], s)[0] for s in steps])
         axes.plot(*way.T, color=GREY, lw=0.7, ls=(0, (4, 2)))
     level = line_through(0.0, LISTRIC.regional, 0.0)
-    bed = slip_line_horizon(x, z, level, LISTRIC.displacement, 7000.0)
+    bed, _ = slip_line_horizon(x, z, level, LISTRIC.displacement, 7000.0)
     axes.plot([-1200.0, 308.0], [LISTRIC.regional] * 2, color=BED)
     axes.plot(bed.x, bed.z, color=BED)
     axes.axhline(LISTRIC.regional, color=BED, lw=0.8, ls=(0, (6, 3)))

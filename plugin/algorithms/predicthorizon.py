@@ -19,6 +19,7 @@ class PredictHorizon(Algorithm):
         declared("PICKS", optional=True),
         declared("HORIZONS"),
         declared("OFFSET"),
+        declared("SLIP"),
         declared("FAULT", optional=True, default=None),
         declared("VERTICAL_DATUM"),
         declared("OUTPUT"),
@@ -73,7 +74,9 @@ class PredictHorizon(Algorithm):
     def _horizons(self, values):
         from ..recipes import further_horizons
 
-        return further_horizons(values.text("HORIZON"), values.text("OFFSET"))
+        return further_horizons(
+            values.text("HORIZON"), values.text("OFFSET"), values.number("SLIP")
+        )
 
     def _study(self, values, place):
         """Give the study that the parameters and the earlier step say."""

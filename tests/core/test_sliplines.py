@@ -60,9 +60,10 @@ def test_planar_fault_moves_everything_straight_down_dip():
     """No bend, no rollover: the horizon stays straight."""
     slope = np.tan(np.radians(60.0))
     x = np.array([-2000.0, 0.0, 6000.0])
-    horizon = slip_line_horizon(
+    horizon, foot = slip_line_horizon(
         x, -slope * x, line_through(0.0, -500.0, 0.0), 800.0, 5000.0
     )
+    assert foot == pytest.approx((500.0 / slope, -500.0))
     drop = 800.0 * np.sin(np.radians(60.0))
     np.testing.assert_allclose(horizon.z, -500.0 - drop, atol=1e-6)
     first = 500.0 / slope + 800.0 * np.cos(np.radians(60.0))

@@ -749,3 +749,18 @@ def test_whatever_comes_in_a_section_ends_in_a_fault_or_in_words(
     assert np.all(np.diff(trace.x) > 0)
     assert np.isfinite([trace.z, trace.dip, trace.sigma_z]).all()
     assert np.all(trace.sigma_z >= 0)
+
+
+def test_further_horizon_by_slip_lines_is_asked_for_by_its_slip():
+    """Over a planar fault slip lines move the horizon straight down dip."""
+    from geomcore.picks import Picks
+    from geomcore.profile import line_through
+    from geomcore.recipe import HorizonSpec
+    from geomcore.study import GivenTrace, horizon_from_trace
+
+    x = np.linspace(0.0, 9000.0, 91)
+    given = GivenTrace(x, -x, "A", line_through(500.0, -500.0, 0.0), 700.0, 0.0)
+    own = horizon_from_trace(HorizonSpec("A", slip=800.0), Picks.empty("S1"), given)
+    drop = 800.0 * np.sin(np.radians(45.0))
+    np.testing.assert_allclose(own.profile.z, -500.0 - drop, atol=1e-6)
+    assert own.hanging_wall == pytest.approx((500.0 + drop, -500.0 - drop))

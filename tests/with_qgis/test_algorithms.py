@@ -962,6 +962,21 @@ def test_misfit_of_the_horizon_that_made_the_fault_is_not_reported(
     assert found["Deep"]["misfit_rms"] is not None
 
 
+def test_slip_lines_fit_a_horizon_of_constant_heave_worse(two_horizons, tmp_path):
+    """The ground moved by constant heave; slip lines are told apart by their misfit."""
+    result = run(
+        "predicthorizon",
+        horizon_parameters(
+            two_horizons, tmp_path / "h.gpkg", HORIZON="Top", SLIP=900.0
+        ),
+    )
+    found = rows(result["OUTPUT"], "predicted_horizons")
+    assert len(found) == 2
+    for row in found:
+        assert "slip lines with a slip of 900" in row["misfit_note"]
+        assert row["misfit_rms"] > 5 * ALLOWED
+
+
 def test_horizon_without_picks_needs_an_offset(two_horizons, tmp_path):
     """Without picks only an offset says where a horizon lies."""
     parameters = horizon_parameters(two_horizons, tmp_path / "h.gpkg", PICKS=None)
