@@ -296,7 +296,7 @@ class PreparedSource:
         """Features that came in, refused ones included; 0 for a grid."""
         if isinstance(self.data, Grid):
             return 0
-        return len(self.data.fid) + sum(self.data.refused.values())
+        return len(np.unique(self.data.fid)) + sum(self.data.refused.values())
 
 
 def _range(values, unknown):
@@ -336,7 +336,7 @@ def prepare_source(declaration, data, length_unit):
     converted = to_vertical(declaration, data.value, length_unit)
     refused = dict(data.refused)
     if data.surface is None:
-        _count_refused_parts(data, converted, refused)
+        _count_refused(data, converted, refused)
     return PreparedSource(
         declaration,
         data,
@@ -350,15 +350,15 @@ def prepare_source(declaration, data, length_unit):
     )
 
 
-def _count_refused_parts(data, converted, refused):
-    """Count parts none of whose vertices has a value, by the first reason."""
+def _count_refused(data, converted, refused):
+    """Count features none of whose vertices has a value, by the first reason."""
     bad = converted.unknown
     if not bad.any():
         return
-    part = data.part_of_vertex
-    good = np.bincount(part[~bad], minlength=len(data.fid)) > 0
-    lost = np.flatnonzero(~good & (np.diff(data.offsets) > 0))
-    for why in converted.reasons_of(data.offsets[lost]).tolist():
+    of_vertex = data.fid[data.part_of_vertex]
+    features, first = np.unique(of_vertex, return_index=True)
+    lost = first[~np.isin(features, of_vertex[~bad])]
+    for why in converted.reasons_of(lost).tolist():
         refused[why] = refused.get(why, 0) + 1
 
 

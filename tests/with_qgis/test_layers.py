@@ -323,6 +323,25 @@ def test_null_is_unknown_and_never_nought(layers):
     assert (prepared.count_in, prepared.refused) == (3, {"no value": 2})
 
 
+def test_features_in_several_parts_are_counted_once(layers):
+    """The input statement counts features, not their parts; one part in use is use."""
+    from heaveline.geomcore.picks import prepare_source
+
+    layer = memory(
+        "MultiPointZ",
+        [
+            ("MULTIPOINTZ(0 0 -1, 1 1 -2, 2 2 -3)",),
+            ("MULTIPOINTZ(3 3 1e30, 4 4 -9999)",),
+            ("MULTIPOINTZ(5 5 -9999, 6 6 -6)",),
+        ],
+    )
+    found = read(layers, layer)
+    assert len(found.fid) == 7
+    prepared = prepare_source(declared(), found, "m")
+    assert prepared.count_in == 3
+    assert prepared.refused == {"null code": 1}
+
+
 def test_a_constant_holds_for_all_vertices(layers):
     """A fault trace at sea level has elevation nought everywhere."""
     layer = memory("LineString", [("LINESTRING(0 0, 1 1, 2 2)",)])
