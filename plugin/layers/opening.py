@@ -9,6 +9,7 @@ from qgis.core import (
     Qgis,
     QgsCoordinateReferenceSystem,
     QgsCoordinateTransformContext,
+    QgsDataSourceUri,
     QgsMessageLog,
     QgsProjUtils,
     QgsProviderRegistry,
@@ -258,8 +259,9 @@ def _set_subset(layer, subset, label):
 def _checked(layer, uri, label):
     if layer is None or not layer.isValid():
         why = "" if layer is None else layer.error().summary()
+        shown = QgsDataSourceUri.removePassword(uri)
         _no_layer(
-            f"'{uri}' cannot be opened. {why}".strip(), label, "Check the source."
+            f"'{shown}' cannot be opened. {why}".strip(), label, "Check the source."
         )
     return layer
 

@@ -617,6 +617,19 @@ def test_layers_that_cannot_be_opened_are_refused_by_name(layers, folder, uri, w
     assert words in str(caught.value)
 
 
+def test_a_database_that_does_not_answer_is_refused_without_its_password(layers):
+    """The table is named in the message, what opens the door to it is not."""
+    uri = (
+        "postgres://dbname='maps' host=127.0.0.1 port=1 user='ann' password='s3cret' "
+        'table="geo"."beds" (geom)'
+    )
+    with pytest.raises(ValueError, match="cannot be opened") as caught:
+        layers.open_layer(uri, None, "tops")
+    assert caught.value.code == "no-layer"
+    assert '"geo"."beds"' in str(caught.value)
+    assert "s3cret" not in str(caught.value)
+
+
 def test_reading_leaves_the_file_as_it_is(layers, folder):
     """A source file is byte for byte the same after it was read."""
     path = folder / "data" / "map.gpkg"
