@@ -31,8 +31,9 @@ def needs_assumed_piece(fault, bed):
     if len(bed) < 2:
         return False
     level, slope = _line_near(bed, first=True)
-    end_x, end_z = fault.x[-1], fault.z[-1]
-    return bool(end_z > level + slope * end_x)
+    # a point on the cut-off itself, but for rounding, has reached it
+    rounding = 1e-6 * (1.0 + np.abs(fault.z).max())
+    return bool(fault.z[-1] - level - slope * fault.x[-1] > rounding)
 
 
 def _line_near(profile, first):
@@ -252,6 +253,8 @@ class _Arc:
 
 
 def _with_points(fault, x, z):
+    if x[-1] - x[-2] <= 0.0:
+        return fault  # so near its end that rounding leaves no arc
     slope = (z[-1] - z[-2]) / (x[-1] - x[-2])
     return replace(
         fault,

@@ -56,11 +56,6 @@ class _Fault:
                 best = i, n, along
         return best
 
-    def too_far(self, n):
-        """Tell whether lines at height n would cross each other (beyond the radius)."""
-        inner = self.legs_at(n)[1:-1]
-        return bool(len(inner) and inner.min() < 0)
-
 
 def slide_along(fault_x, fault_z, points, slip):
     """Move points along lines parallel to the fault.
@@ -83,7 +78,7 @@ def slide_along(fault_x, fault_z, points, slip):
     Raises
     ------
     ConstructionError
-        If a point lies farther from a bend than its radius of curvature, where
+        If a point passes a bend farther from it than its radius of curvature, where
         parallel lines cross.
 
     Notes
@@ -101,18 +96,18 @@ def _slid(fault, point, slip):
     if place is None:
         return np.full(2, np.nan)
     i, n, along = place
-    if fault.too_far(n):
-        raise ConstructionError(
-            "beyond-radius",
-            f"the point at x = {point[0]:.0f}, z = {point[1]:.0f} lies farther from "
-            "the fault than its radius of curvature.",
-            remedy="Use another model, or a horizon nearer to the fault.",
-        )
     legs = fault.legs_at(n)
     rest = along + slip
     while i < len(legs) - 1 and rest > legs[i]:
         rest -= legs[i]
         i += 1
+        if legs[i] < 0:  # parallel lines this high cross each other here
+            raise ConstructionError(
+                "beyond-radius",
+                f"the point at x = {point[0]:.0f}, z = {point[1]:.0f} passes a bend at "
+                "a height beyond the fault's radius of curvature.",
+                remedy="Use another model, or a horizon nearer to the fault.",
+            )
     if rest > legs[i] + 1e-9:
         return np.full(2, np.nan)
     return fault.corner(i, n) + rest * fault.tangent[i]
@@ -135,7 +130,8 @@ def slip_line_horizon(fault_x, fault_z, regional, slip, x_end, samples=200):
     Returns
     -------
     horizon : Profile
-        Deformed, as far as it is single-valued and the fault reaches.
+        Deformed, as far as it is single-valued, the fault reaches and it lies within
+        the fault's radius of curvature.
     footwall : tuple (x, z)
         Its footwall cut-off.
 
@@ -155,9 +151,8 @@ def slip_line_horizon(fault_x, fault_z, regional, slip, x_end, samples=200):
     f = gap[i] / (gap[i] - gap[i + 1])
     foot = fault_x[i] + f * (fault_x[i + 1] - fault_x[i])
     x = np.linspace(foot, x_end, samples)
-    moved = slide_along(fault_x, fault_z, np.column_stack([x, regional(x)]), slip)
-    known = np.isfinite(moved[:, 0])
-    moved = moved[known]
+    moved = _slid_until(fault_x, fault_z, np.column_stack([x, regional(x)]), slip)
+    moved = moved[np.isfinite(moved[:, 0])]
     if len(moved) < 2:
         raise ConstructionError(
             "fault-too-short", "the fault ends before the slip along it is spent."
@@ -165,3 +160,17 @@ def slip_line_horizon(fault_x, fault_z, regional, slip, x_end, samples=200):
     keep = np.r_[True, np.diff(moved[:, 0]) > 0]
     horizon = Profile(moved[keep, 0], moved[keep, 1], np.zeros(int(keep.sum())))
     return horizon, (float(foot), float(regional(foot)))
+
+
+def _slid_until(fault_x, fault_z, points, slip):
+    """Slide points in their order until one lies beyond the radius of curvature."""
+    fault = _Fault(np.asarray(fault_x), np.asarray(fault_z))
+    moved = []
+    for point in points:
+        try:
+            moved.append(_slid(fault, point, slip))
+        except ConstructionError:
+            if len(moved) < 2:
+                raise
+            break
+    return np.array(moved)

@@ -166,7 +166,10 @@ def _lower_side(picks, horizon, spec):
     beyond = _level_at(bed, marks.max(), 1, spec)
     if before is None or beyond is None:
         return 0.0
-    return float(np.sign(before - beyond))
+    drop = before - beyond
+    # levels that differ by rounding alone tell no side
+    rounding = 1e-6 * (1.0 + max(abs(before), abs(beyond)))
+    return float(np.sign(drop)) if abs(drop) > rounding else 0.0
 
 
 def _level_at(bed, at, side, spec):

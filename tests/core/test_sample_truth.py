@@ -187,7 +187,8 @@ def test_map_and_local_coordinates_convert_both_ways():
     # transport points south-east, the hanging wall is on the right along strike
     along, strike = truth.axes()
     assert np.degrees(np.arctan2(*along)) == pytest.approx(truth.TRANSPORT_AZIMUTH)
-    assert np.cross(strike, along) == pytest.approx(-1.0)
+    across = strike[0] * along[1] - strike[1] * along[0]
+    assert across == pytest.approx(-1.0)
 
 
 # ---- the survey --------------------------------------------------------------------

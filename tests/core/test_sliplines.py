@@ -91,7 +91,7 @@ def test_horizon_beyond_the_radius_is_refused():
     leg = np.array([x[1] - x[0], z[1] - z[0]]) / np.hypot(x[1] - x[0], z[1] - z[0])
     over = np.array([x[0], z[0]]) + 200.0 * leg + 900.0 * np.array([-leg[1], leg[0]])
     with pytest.raises(ConstructionError) as error:
-        slide_along(x, z, [over], 100.0)
+        slide_along(x, z, [over], 5000.0)
     assert error.value.code == "beyond-radius"
 
 

@@ -967,14 +967,14 @@ def test_slip_lines_fit_a_horizon_of_constant_heave_worse(two_horizons, tmp_path
     result = run(
         "predicthorizon",
         horizon_parameters(
-            two_horizons, tmp_path / "h.gpkg", HORIZON="Top", SLIP=900.0
+            two_horizons, tmp_path / "h.gpkg", HORIZON="Deep", SLIP=900.0
         ),
     )
     found = rows(result["OUTPUT"], "predicted_horizons")
     assert len(found) == 2
     for row in found:
         assert "slip lines with a slip of 900" in row["misfit_note"]
-        assert row["misfit_rms"] > 5 * ALLOWED
+        assert row["misfit_rms"] > 2 * ALLOWED
 
 
 def test_horizon_without_picks_needs_an_offset(two_horizons, tmp_path):
