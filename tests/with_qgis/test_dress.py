@@ -4,6 +4,7 @@ The ground is invented: a listric fault in closed form, a horizon laid over it b
 from the definition of vertical shear. Pictures are checked against that closed form.
 """
 
+import contextlib
 import math
 import shutil
 import sqlite3
@@ -288,7 +289,7 @@ def test_foreign_table_of_runs_does_no_harm(tables, tmp_path):
 
 def test_field_meanings_stand_in_the_standard_table(results):
     """Other programs read them too: GeoPackage standard, extension 'schema'."""
-    with sqlite3.connect(results) as database:
+    with contextlib.closing(sqlite3.connect(results)) as database:
         rows = database.execute(
             "SELECT table_name, column_name, title, description FROM gpkg_data_columns"
         ).fetchall()
@@ -311,7 +312,7 @@ def test_field_meanings_stand_in_the_standard_table(results):
 
 def test_stored_style_holds_no_place_of_this_machine(results):
     """Neither the file's own path nor a user's name goes out with it."""
-    with sqlite3.connect(results) as database:
+    with contextlib.closing(sqlite3.connect(results)) as database:
         styles = database.execute("SELECT styleQML, owner FROM layer_styles").fetchall()
     database.close()
     assert len(styles) == len(LAYERS)

@@ -1,5 +1,6 @@
 """The sample project as it is shipped: complete, styled, relative, up to date."""
 
+import contextlib
 import shutil
 import sqlite3
 import zipfile
@@ -93,7 +94,7 @@ def test_results_shipped_are_those_of_the_study(qgis_app, tmp_path):
 def _figures(path):
     """Give heave, throw and elevations of each predicted trace."""
     uri = path.as_uri() + "?mode=ro"
-    with sqlite3.connect(uri, uri=True) as connection:
+    with contextlib.closing(sqlite3.connect(uri, uri=True)) as connection:
         rows = connection.execute(
             "select section_id, heave, throw, regional_z, z_top, z_base "
             "from predicted_fault_traces where band = 'best'"
