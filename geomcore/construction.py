@@ -33,7 +33,7 @@ SOLVERS = {"march": solve_march, "fit": solve_by_fit}
 
 #: Strips beyond which a section is refused; the answer is of no use long before
 #: (methods.md section 13, rule 2: after about six).
-MOST_STRIPS = 100
+MOST_STRIPS = 300
 
 
 @dataclass(frozen=True, eq=False)
