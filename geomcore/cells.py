@@ -123,7 +123,8 @@ def _ranges(low, high, origin, size, shape):
     first = np.floor((low - origin) / size)
     last = first if high is low else np.floor((high - origin) / size)
     if shape is not None:
-        first, last = np.clip(first, 0, None), np.minimum(last, shape - 1)
+        # cut to the map before they become whole numbers: tiny cells overflow those
+        first, last = np.clip(first, 0, shape), np.clip(last, -1, shape - 1)
     count = np.maximum(last - first + 1, 0)
     return first.astype(np.int64), count.astype(np.int64)
 

@@ -49,6 +49,14 @@ def test_every_point_in_a_box_is_found(points, asked):
     assert set(np.flatnonzero(inside)) <= set(found)
 
 
+def test_a_map_smaller_than_rounding_has_cells_too():
+    """Two boxes 1e-84 apart, and a question from far away."""
+    low = np.zeros((2, 2))
+    index = CellIndex.build(low, np.array([[0.0, 0.0], [0.0, 2e-84]]))
+    assert index.near(np.array([[0.0, 1.0]]), np.array([[0.0, 1.0]])).tolist() == []
+    assert index.near(low[:1], low[:1]).tolist() == [0, 1]
+
+
 def test_few_of_many_are_looked_at():
     """A small box among evenly spread points brings little more than its own."""
     xy = np.random.default_rng(1).uniform(0, 1000, (50000, 2))
