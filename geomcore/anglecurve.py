@@ -13,6 +13,11 @@ from .errors import ConstructionError
 
 __all__ = [
     "ANGLES",
+    "AREA",
+    "CUTOFFS",
+    "HORIZONS",
+    "TIES",
+    "WAYS",
     "AngleEstimate",
     "estimate",
     "joint_angle",
@@ -20,6 +25,9 @@ __all__ = [
     "require_scipy",
     "unresolved",
 ]
+
+#: The ways of finding the angle, as recipes and results name them.
+HORIZONS, TIES, CUTOFFS, AREA = WAYS = ("horizons", "ties", "cut-offs", "area")
 
 #: Angles tried, degrees (methods.md section 6: -35 to 50 in steps of 5, then refined).
 ANGLES = np.arange(-35.0, 50.1, 5.0)
@@ -44,7 +52,7 @@ class AngleEstimate:
     Parameters
     ----------
     way : str
-        Which data, in words.
+        One of `WAYS`.
     best : float or None
         Angle of least misfit, degrees; None where no angle could be told at all.
     mean, sd : float or None

@@ -6,6 +6,10 @@ import numpy as np
 
 from .anglecurve import (
     ANGLES,
+    AREA,
+    CUTOFFS,
+    HORIZONS,
+    TIES,
     AngleEstimate,
     estimate,
     joint_angle,
@@ -22,11 +26,6 @@ from .uncertainty import moved_problem, parameter_roots
 
 __all__ = [
     "ANGLES",
-    "AREA",
-    "CUTOFFS",
-    "HORIZONS",
-    "TIES",
-    "WAYS",
     "AngleEstimate",
     "angle_from_area",
     "angle_from_cutoffs",
@@ -34,11 +33,9 @@ __all__ = [
     "angle_from_horizons",
     "angle_from_separations",
     "angle_from_ties",
+    "has_deep_points",
     "joint_angle",
 ]
-
-#: The ways, as recipes and results name them.
-HORIZONS, TIES, CUTOFFS, AREA = WAYS = ("horizons", "ties", "cut-offs", "area")
 
 #: Angles at which the closed forms are tried, degrees.
 _EVEN = np.arange(ANGLES[0], ANGLES[-1] + 0.1, 0.5)
@@ -73,7 +70,19 @@ class _Search:
             return angles, values, 0.0
         best = self.fits[angles[int(np.argmin(values))]][0]
         # differences tell the angle; the level is that of the data's misfit
-        return angles, values - values.min() + best.chi2, best.freedom
+        values = (values - values.min()) * self._reliance(angles, values, best)
+        return angles, values + best.chi2, best.freedom
+
+    def _reliance(self, angles, values, best):
+        """Share of the curve that holds: the fault it rests on is noisy itself.
+
+        A curve of standard deviation s has a slope of variance 1/s^2; what noise in
+        the fitted fault adds widens the scatter of its least by that share.
+        """
+        found = estimate(HORIZONS, angles, values, 0.0)
+        if found.sd is None:
+            return 1.0
+        return 1.0 / (1.0 + found.sd**2 * self.system.slope_noise(best))
 
     def _scan(self):
         """Try coarse angles from vertical shear outwards, smoothness free."""

@@ -220,8 +220,9 @@ class JointSystem:
             return None
         for step in range(_STEPS):
             state, linear, rows = now
-            if step < 2 and not fixed:
-                log_weight = linear.best_weight(log_weight)
+            if not fixed and step < (2 if near else 4):
+                # far from a solution the best weight of one step misleads the next
+                log_weight = linear.best_weight(log_weight if near else None)
             found = linear.solved(log_weight)
             if found is None:
                 return None
@@ -233,6 +234,49 @@ class JointSystem:
             if now is None:
                 return None
         return None
+
+    def slope_noise(self, fit):
+        """Give the variance that the fault's own noise adds to the misfit's slope.
+
+        Parameters
+        ----------
+        fit : JointFit
+
+        Returns
+        -------
+        float
+            Of half the derivative of the misfit with the angle, per degree squared.
+
+        Notes
+        -----
+        With data y = J(a) F + e the fitted fault is F + K e, and half the slope of the
+        misfit at the true angle is e'Q J_a F - e'Q J_a K e, with J_a the derivative of
+        J, K = N^-1 J', Q = 1 - J K and N the normal matrix with its curvature. The
+        curve itself states the variance of the first part. That of the second, a
+        quadratic form in unit normal errors, is tr(M^2) + tr(M M') with M = Q J_a K.
+        """
+        coefficients, own, _ = fit.state
+        n, size = len(coefficients), len(coefficients) + own.size
+        step = 0.25
+        tangents = np.tan(np.radians(fit.angle + step * np.arange(-1, 2)))
+        parts = [self._compared(fit.state, t, rows=True) for t in tangents]
+        if any(p is None for p in parts):
+            return 0.0
+        both, turn = np.zeros((size, size)), np.zeros((size, size))
+        for k, (low, here, high) in enumerate(zip(*parts)):
+            at = np.r_[np.arange(n), n + 3 * k + np.arange(3)]
+            rows = np.hstack(here[1:3])
+            change = (np.hstack(high[1:3]) - np.hstack(low[1:3])) / (2.0 * step)
+            both[np.ix_(at, at)] += rows.T @ change
+            turn[np.ix_(at, at)] += change.T @ change
+        data, full = fit.linear.normal, fit.linear.normal.copy()
+        full[:n, :n] += np.exp(fit.log_weight) * self.bent
+        inner = np.linalg.solve(full, np.hstack([both, data]))
+        of_both, of_data = inner[:, :size], inner[:, size:]
+        left = np.linalg.solve(full, (both - data @ of_both).T)
+        squared = turn - 2.0 * both.T @ of_both + of_both.T @ data @ of_both
+        spread = np.linalg.solve(full, of_data.T).T
+        return float(np.trace(left @ left) + np.trace(spread @ squared))
 
     def _compared(self, state, tan, rows):
         """Compare all horizons with a fault; None without a solution."""

@@ -4,6 +4,7 @@ import json
 from dataclasses import dataclass, field, replace
 from typing import Optional
 
+from .anglecurve import WAYS
 from .compaction import compaction_from
 from .documents import read_list, read_object, require, write_object
 from .errors import StudyError
@@ -15,6 +16,7 @@ __all__ = [
     "FORMAT",
     "SOLVERS",
     "VERSION",
+    "CalibrationSpec",
     "CandidateSpec",
     "CompactionSpec",
     "ConstructionSpec",
@@ -324,6 +326,48 @@ class ConstructionSpec:
 
 
 @dataclass(frozen=True)
+class CalibrationSpec:
+    """What the shear angle is found from.
+
+    Parameters
+    ----------
+    horizons : tuple of str
+        Horizons that have to belong to one fault, growth horizons among them; that of
+        the construction and its fit horizons if empty.
+    pre_growth : tuple of str
+        Those older than the fault's movement, whose heave against throw tells the
+        angle too.
+    ways : tuple of str
+        Of `anglecurve.WAYS`; all that the data allow if empty.
+    detachment_z, detachment_sigma : float, optional
+        Level detachment known from elsewhere, for the lost area.
+    """
+
+    horizons: tuple = ()
+    pre_growth: tuple = ()
+    ways: tuple = ()
+    detachment_z: Optional[float] = None
+    detachment_sigma: float = 50.0
+
+    def __post_init__(self):
+        where = "calibration"
+        _more_than(0, where, detachment_sigma=self.detachment_sigma)
+        for way in self.ways:
+            require(
+                way in WAYS,
+                f"there is no way '{way}'.",
+                where,
+                "Use of: " + ", ".join(WAYS) + ".",
+            )
+        require(
+            "area" not in self.ways or self.detachment_z is not None,
+            "the way 'area' needs a known detachment.",
+            where,
+            "Give detachment_z.",
+        )
+
+
+@dataclass(frozen=True)
 class OutputsSpec:
     """What the study writes, relative to the study file.
 
@@ -360,6 +404,8 @@ class Study:
     outputs : OutputsSpec
     note : str
         Free text of the author.
+    calibration : CalibrationSpec, optional
+        What the shear angle is to be found from; `calibrating.calibrate` does it.
     """
 
     name: str
@@ -374,6 +420,7 @@ class Study:
     picks: PicksSpec = field(default_factory=PicksSpec)
     outputs: OutputsSpec = field(default_factory=OutputsSpec)
     note: str = ""
+    calibration: Optional[CalibrationSpec] = None
 
     def __post_init__(self):
         require(
@@ -454,6 +501,8 @@ def _read_parts(document):
         parts["picks"] = replace(spec, tracked=tuple(spec.tracked))
     if "sections" in document:
         parts["sections"] = _read_sections(document["sections"])
+    if document.get("calibration") is not None:
+        parts["calibration"] = _read_calibration(document["calibration"])
     if "construction" in document:
         parts["construction"] = _read_construction(document["construction"])
     sources = document.get("sources", [])
@@ -469,6 +518,14 @@ def _read_sections(document):
             ParallelSpec, document["parallel"], "sections.parallel"
         )
     return read_object(SectionsSpec, document, "sections", **given)
+
+
+def _read_calibration(document):
+    given = {}
+    if isinstance(document, dict):
+        for name in ("horizons", "pre_growth", "ways"):
+            given[name] = tuple(read_list(document, name, "calibration"))
+    return read_object(CalibrationSpec, document, "calibration", **given)
 
 
 def _read_construction(document):
