@@ -11,6 +11,7 @@ import numpy as np
 
 from .assumed import ASSUMED_ERRORS, carry_on, with_assumed_errors
 from .balancing import balance_section
+from .calibrating import calibrate
 from .compaction import compaction_from
 from .comparing import compare_section
 from .construction import MarchOptions, predict_fault
@@ -61,6 +62,7 @@ __all__ = [
     "SectionSet",
     "Study",
     "StudyRun",
+    "calibrate",
     "construct",
     "horizon_from_trace",
     "lay_sections",
