@@ -352,7 +352,7 @@ def _regional_with(foot, regional, picks, name, spec):
 
 
 def _require_usable(separation, bed, fault, where):
-    """Refuse a horizon that is not displaced, starts nowhere, or has hardly any picks."""
+    """Refuse a horizon that is not displaced, has no known start, or few picks."""
     if separation.heave <= 0 or separation.throw <= 0:
         raise ConstructionError(
             "reverse-separation",
