@@ -258,10 +258,11 @@ def estimate(way, angles, chi2, freedom, note=""):
     mean = float(weight @ fine)
     sd = float(np.sqrt(weight @ (fine - mean) ** 2))
     total = np.cumsum(weight) - 0.5 * weight
+    at_end = _AT_END * weight.max()
     low, high = (float(np.interp(q, total, fine)) for q in (0.05, 0.95))
-    at_end = max(weight[0], weight[-1]) > _AT_END * weight.max()
-    resolved = bool(high - low < NOT_RESOLVED and not at_end)
-    text = _words(best, low, high, float(curve.min()), freedom, resolved) + note
+    ends = [a for a, w in ((fine[0], weight[0]), (fine[-1], weight[-1])) if w > at_end]
+    resolved = bool(high - low < NOT_RESOLVED and not ends)
+    text = _words(best, low, high, float(curve.min()), freedom, ends) + note
     return AngleEstimate(
         way, best, mean, sd, low, high, angles, chi2, freedom, resolved, text
     )
@@ -279,11 +280,17 @@ def _fine_angles(angles, chi2):
     return np.linspace(fine[first], fine[last], 1201)
 
 
-def _words(best, low, high, least, freedom, resolved):
-    if not resolved:
+def _words(best, low, high, least, freedom, ends):
+    if high - low >= NOT_RESOLVED:
         return (
             f"Not resolved: angles from {low:.0f} to {high:.0f} degrees explain the "
             "data about as well."
+        )
+    if ends:
+        places = " and ".join(f"{a:.0f}" for a in ends)
+        return (
+            f"Not resolved: the data suit best an angle near {best:.0f} degrees, but "
+            f"the angles that could be tried end at {places}."
         )
     text = f"{best:.1f} degrees, 90 % interval {low:.1f} to {high:.1f}."
     if freedom > 0 and least > freedom + 3.0 * np.sqrt(2.0 * freedom):

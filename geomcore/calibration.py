@@ -325,22 +325,41 @@ def angle_from_detachment(problem, detachment_z, detachment_sigma):
     -----
     At each angle the area up to the last shear line is A = H (R - z_det), R the mean
     of the regional over the last strip (eq. 8a of methods.md). The misfit of that
-    carries the errors of picks, known fault, regional and cut-offs through both sides.
+    carries the errors of picks, known fault, regional and cut-offs through both sides,
+    and what the area would still grow by beyond the picks, going by its last strips.
     """
     require_scipy(problem.where)
 
-    def value(angle):
-        return _area_misfit(problem, angle, detachment_z, detachment_sigma)
-
-    tried = {a: value(a) for a in ANGLES.tolist()}
-    angles, chi2 = refined(value, tried)
-    found = estimate(AREA, angles, chi2, 0.0)
+    found = _from_area(problem, detachment_z, detachment_sigma, 0.0)
     if found.best is None:
         return found
     course = area_convergence(_at_angle(problem, found.best))
-    if course.levelled:
-        return found
-    return replace(found, resolved=False, text=f"Not resolved: {course.text}")
+    if not course.levelled:
+        return unresolved(AREA, course.text)
+    return _from_area(problem, detachment_z, detachment_sigma, _still_to_come(course))
+
+
+def _from_area(problem, z, sigma, to_come):
+    """Estimate from the area, a share of which may still be to come."""
+
+    def value(angle):
+        return _area_misfit(problem, angle, z, sigma, to_come)
+
+    return estimate(AREA, *refined(value, {a: value(a) for a in ANGLES.tolist()}), 0.0)
+
+
+def _still_to_come(course, per_strip=4):
+    """Share of the area that strips beyond the picks would add.
+
+    The last strip's change goes on as a geometric row by the ratio of the last two.
+    """
+    depth = course.depth
+    if len(depth) <= 2 * per_strip:
+        return 1.0
+    last = depth[-1] - depth[-1 - per_strip]
+    before = depth[-1 - per_strip] - depth[-1 - 2 * per_strip]
+    ratio = np.clip(last / before if before != 0 else 0.0, 0.0, 0.9)
+    return float(abs(last) * max(ratio / (1.0 - ratio), 1.0) / depth[-1])
 
 
 def _at_angle(problem, angle):
@@ -357,7 +376,7 @@ def _possible(problems, angle):
     return True
 
 
-def _area_misfit(problem, angle, z, sigma):
+def _area_misfit(problem, angle, z, sigma, to_come):
     """Misfit of A = H (R - z_det) in units of its error, squared."""
     if not _possible([problem], angle):
         return np.inf
@@ -379,6 +398,7 @@ def _area_misfit(problem, angle, z, sigma):
         of_picks = lost_area(replace(problem, regional=exact)).sigma
         variance = of_picks**2 + ((np.array(effect) @ root) ** 2).sum()
         variance += (problem.oblique_heave * sigma) ** 2
+        variance += (to_come * lost_area(problem).total) ** 2
         return float(miss(problem) ** 2 / variance)
     except GeomcoreError:
         return np.inf

@@ -24,7 +24,7 @@ _KNOTS, _MOST = 3.0, 120
 _LEAST = 1e-3
 #: Gauss-Newton steps at most. They end where the misfit is going to lessen by no more
 #: than this, or this share of it.
-_STEPS, _SMALL, _SHARE = 15, 0.02, 1e-4
+_STEPS, _SMALL, _SHARE = 20, 0.01, 2e-5
 
 
 @dataclass(frozen=True, eq=False)

@@ -66,6 +66,8 @@ _PREDICTED = (
     "balance",
     "subsidiary_faults",
     "growth_history",
+    "shear_angle",
+    "shear_misfit",
     "runs",
 )
 

@@ -610,6 +610,22 @@ _DECLARED = (
         least=0.0,
         optional=True,
     ),
+    # ---- calibration --------------------------------------------------------------
+    Parameter(
+        "CALIBRATION_HORIZONS",
+        "text",
+        "Horizons that tell the shear angle",
+        "Names in the picks, separated by semicolons; growth horizons are meant too. "
+        "Each has its own cut-offs and regional, and all have to belong to one fault.",
+    ),
+    Parameter(
+        "PRE_GROWTH",
+        "text",
+        "Horizons older than the fault's movement",
+        "Names, separated by semicolons. Their heave against throw tells the angle "
+        "too; two at least are needed.",
+        optional=True,
+    ),
     # ---- study and outputs --------------------------------------------------------
     Parameter(
         "STUDY",
@@ -648,6 +664,7 @@ _DECLARED = (
 _KEYS = {
     "HORIZON_LAYER": "HORIZON",
     "HORIZONS": "HORIZON",
+    "CALIBRATION_HORIZONS": "HORIZON",
     "PREDICTED_TRACES": "FAULT_TRACE",
 }
 

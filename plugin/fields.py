@@ -795,6 +795,69 @@ _GROWTH_HISTORY = LayerSpec(
     "youngest; where two horizons or more were measured in depth.",
 )
 
+_WAY = _text(
+    "way",
+    "Way",
+    "'horizons': several horizons, one fault; 'ties': deep points on the fault; "
+    "'cut-offs': heave against throw of pre-growth horizons; 'area': known detachment "
+    "and lost area.",
+)
+_SECTION_OR_ALL = _text(
+    "section_id", "Section", "Name of the section; null for all sections together."
+)
+
+_SHEAR_ANGLE = LayerSpec(
+    "shear_angle",
+    None,
+    (
+        *_STAMP,
+        _SECTION_OR_ALL,
+        _WAY,
+        _real(
+            "best",
+            "Best angle",
+            "Shear angle of least misfit, degrees from the vertical, positive "
+            "antithetic; null where no angle can be told at all.",
+        ),
+        _real("low", "Low", "Lower end of the 90 % interval, degrees."),
+        _real("high", "High", "Upper end of the 90 % interval, degrees."),
+        _real("sigma", "Sigma", "One standard deviation of the angle, degrees."),
+        FieldSpec(
+            "resolved",
+            "boolean",
+            "Resolved",
+            "Whether the data tell the angle; where not, the text says why.",
+        ),
+        _real("chi2", "Chi-square", "Least misfit of the data, in units of errors."),
+        _real("freedom", "Degrees of freedom", "Of chi-square."),
+        _text("horizons", "Horizons", "Horizons used, separated by semicolons."),
+        _text("text", "Text", "What the data say, in words."),
+        _WARNINGS,
+    ),
+    "Shear angle",
+    "The shear angle told by the data, one row a section and way, with its interval; "
+    "rows without a section are those of all sections together.",
+)
+
+_SHEAR_MISFIT = LayerSpec(
+    "shear_misfit",
+    None,
+    (
+        *_STAMP,
+        _SECTION_OR_ALL,
+        _WAY,
+        _real("angle", "Angle", "Shear angle tried, degrees."),
+        _real(
+            "chi2",
+            "Chi-square",
+            "Misfit at that angle; null where the construction has no solution. Twice "
+            "the log likelihood ratio of two angles is its difference.",
+        ),
+    ),
+    "Misfit of shear angles",
+    "The misfit curves behind the table of shear angles, one row an angle tried.",
+)
+
 _RUNS = LayerSpec(
     "runs",
     None,
@@ -837,18 +900,22 @@ LAYERS = {
         _BALANCE,
         _SUBSIDIARY_FAULTS,
         _GROWTH_HISTORY,
+        _SHEAR_ANGLE,
+        _SHEAR_MISFIT,
         _INPUT_STATEMENT,
         _RUNS,
     )
 }
 
-#: Tables that are written only where the study asks for what they hold, or where its
-#: sections have subsidiary faults or several horizons.
+#: Tables that are written only where the study asks for what they hold, where its
+#: sections have subsidiary faults or several horizons, or by a calibration.
 ON_REQUEST = (
     _METHOD_COMPARISON.name,
     _BALANCE.name,
     _SUBSIDIARY_FAULTS.name,
     _GROWTH_HISTORY.name,
+    _SHEAR_ANGLE.name,
+    _SHEAR_MISFIT.name,
 )
 
 

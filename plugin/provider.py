@@ -5,6 +5,7 @@ from pathlib import Path
 from qgis.core import QgsProcessingProvider
 from qgis.PyQt.QtGui import QIcon
 
+from .algorithms.calibrateshear import CalibrateShear
 from .algorithms.parallelsections import ParallelSections
 from .algorithms.predictfault import PredictFault
 from .algorithms.predicthorizon import PredictHorizon
@@ -14,7 +15,14 @@ from .algorithms.runstudy import RunStudy
 __all__ = ["ALGORITHMS", "HeavelineProvider", "plugin_icon"]
 
 #: Every algorithm, in the order of the work.
-ALGORITHMS = (ParallelSections, PullPicks, PredictFault, PredictHorizon, RunStudy)
+ALGORITHMS = (
+    ParallelSections,
+    PullPicks,
+    CalibrateShear,
+    PredictFault,
+    PredictHorizon,
+    RunStudy,
+)
 
 _ICON = Path(__file__).resolve().parent / "outputs" / "icons" / "heaveline.svg"
 

@@ -9,6 +9,7 @@ from dataclasses import replace
 from pathlib import Path
 
 __all__ = [
+    "calibration_study",
     "construction_study",
     "further_horizons",
     "horizons_study",
@@ -312,6 +313,39 @@ def construction_study(values, crs, unit, transport, earlier=None):
         separation_to=values.number("SEPARATION_TO"),
     )
     return replace(base, picks=picks)
+
+
+def calibration_study(values, crs, unit, transport, earlier=None):
+    """Give the study that finds the shear angle from picks.
+
+    Parameters
+    ----------
+    values, crs, unit, transport, earlier
+        As in `construction_study`.
+
+    Returns
+    -------
+    Study
+    """
+    from ..geomcore.recipe import CalibrationSpec, ConstructionSpec
+
+    made = earlier.construction if earlier else ConstructionSpec("")
+    regional = replace(
+        made.regional,
+        dip=values.number("REGIONAL_DIP"),
+        footwall_within=values.number("FOOTWALL_WITHIN"),
+        parallel_to="" if values.has("REGIONAL_DIP") else made.regional.parallel_to,
+    )
+    base = _after(
+        values, crs, unit, transport, earlier, replace(made, regional=regional)
+    )
+    calibration = CalibrationSpec(
+        names_in(values.text("HORIZON")),
+        names_in(values.text("PRE_GROWTH")),
+        detachment_z=values.number("DETACHMENT_Z"),
+        detachment_sigma=values.number("DETACHMENT_SIGMA"),
+    )
+    return replace(base, calibration=calibration)
 
 
 def horizons_study(values, crs, unit, transport, earlier, further):

@@ -4,6 +4,7 @@ import math
 
 __all__ = [
     "aligned",
+    "calibration_lines",
     "doubt_lines",
     "horizon_lines",
     "lost_horizon_lines",
@@ -148,6 +149,31 @@ def unsolved_lines(run):
         if not s.prediction
     ]
     return own + [f"{u.section_id}: not used: {u.reason}" for u in run.unsolved]
+
+
+def calibration_lines(result):
+    """Say what shear angle each section and way gives, and all sections together.
+
+    Parameters
+    ----------
+    result : CalibrationResult
+
+    Returns
+    -------
+    list of str
+    """
+    heads = ("section", "way", "best", "low", "high", "what the data say")
+    found = [(s.section_id, e) for s in result.sections for e in s.estimates]
+    found += [("all", e) for e in result.joint]
+    rows = [
+        (name, e.way, *(number(v, 1) for v in (e.best, e.low, e.high)), e.text)
+        for name, e in found
+    ]
+    lines = ["Shear angle, degrees from the vertical, positive antithetic"]
+    lines += aligned(heads, rows, right=(2, 3, 4))
+    if result.best is None:
+        return [*lines, "The data do not tell the shear angle."]
+    return [*lines, f"Best: {result.best.text} (way: {result.best.way})"]
 
 
 def horizon_lines(items):

@@ -25,6 +25,7 @@ from .layers import (
     write_geopackage,
 )
 from .north import convergence_of
+from .outputs import calibrated
 from .outputs import tables as rows
 from .outputs.dress import dresser
 from .recipes import relative_uri
@@ -32,6 +33,8 @@ from .recipes import relative_uri
 __all__ = [
     "Place",
     "Pulled",
+    "calibration_tables",
+    "draw_calibration",
     "draw_plots",
     "file_names",
     "horizon_tables",
@@ -333,6 +336,31 @@ def horizon_tables(study, section_set, items, sha256):
     return [*made, rows.runs_table(stamp, run, made, versions())]
 
 
+def calibration_tables(study, section_set, picks, result):
+    """Give the rows of the shear angle, its misfit curves and the run.
+
+    Parameters
+    ----------
+    study : Study
+    section_set : SectionSet
+    picks : dict of str to SectionPicks
+    result : CalibrationResult
+
+    Returns
+    -------
+    list of Table
+    """
+    sha256 = digest(study, section_set.frames, picks)
+    stamp = _stamp(study, sha256)
+    made = [
+        calibrated.shear_angle_table(stamp, result),
+        calibrated.shear_misfit_table(stamp, result),
+    ]
+    run = _unconstructed(study, section_set, sha256)
+    run = replace(run, doubts=(*run.doubts, *result.doubts))
+    return [*made, rows.runs_table(stamp, run, made, versions())]
+
+
 def recorded(study, base, folder):
     """Write the places of a study's layers relative to the folder of its results.
 
@@ -437,6 +465,22 @@ def draw_plots(run, folder, steps):
             save_section_figure(figure, folder / other, PLOT_FORMATS)
         steps.progress((i + 1) / len(run.sections))
     return len(run.sections)
+
+
+def draw_calibration(study, result, folder):
+    """Draw the misfit curves of the shear angle into a folder.
+
+    Parameters
+    ----------
+    study : Study
+    result : CalibrationResult
+    folder : pathlib.Path
+    """
+    from ..geomcore.plot_calibration import calibration_figure
+    from ..geomcore.plots import save_section_figure
+
+    figure = calibration_figure(study, result)
+    save_section_figure(figure, folder / "shear_angle", PLOT_FORMATS)
 
 
 def file_names(section_ids):

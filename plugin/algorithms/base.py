@@ -316,6 +316,8 @@ def _new_style():
 _DRAWING_ORDER = (
     "runs",
     "input_statement",
+    "shear_misfit",
+    "shear_angle",
     "growth_history",
     "subsidiary_faults",
     "balance",
