@@ -177,6 +177,9 @@ def _jointly(sections):
         own = [e for e in (s.by(way) for s in sections) if e is not None]
         if not own:
             continue
+        if all(e.best is None for e in own):
+            yield own[0]  # with its reason, as a rule that of all of them
+            continue
         try:
             yield own[0] if len(own) == 1 else joint_angle(own)
         except ConstructionError as error:
