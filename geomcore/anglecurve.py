@@ -254,7 +254,7 @@ def estimate(way, angles, chi2, freedom, note=""):
     curve = read_curve(angles, chi2, fine)
     weight = np.exp(-0.5 * (curve - curve.min()))
     weight /= weight.sum()
-    best = float(fine[int(np.argmin(curve))])
+    best = _lowest(fine, curve)
     mean = float(weight @ fine)
     sd = float(np.sqrt(weight @ (fine - mean) ** 2))
     total = np.cumsum(weight) - 0.5 * weight
@@ -266,6 +266,17 @@ def estimate(way, angles, chi2, freedom, note=""):
     return AngleEstimate(
         way, best, mean, sd, low, high, angles, chi2, freedom, resolved, text
     )
+
+
+def _lowest(x, y):
+    """Give the lowest point of a curve, between its points."""
+    i = int(np.argmin(y))
+    if not 0 < i < len(x) - 1:
+        return float(x[i])
+    fall, rise = y[i - 1] - y[i], y[i + 1] - y[i]
+    both = fall + rise
+    shift = 0.5 * (fall - rise) / both if both > 0 else 0.0
+    return float(x[i] + shift * (x[i + 1] - x[i]))
 
 
 def _fine_angles(angles, chi2):

@@ -41,10 +41,18 @@ __all__ = [
 _EVEN = np.arange(ANGLES[0], ANGLES[-1] + 0.1, 0.5)
 #: The search ends outwards where the misfit has grown by this much.
 _STEEP, _ENOUGH = 1000.0, 25.0
+#: Least standard deviation of the data at first, as a share of the throw.
+_BLUNT = 1e-2
+#: Times the smoothness is found anew, and the change of its log that is none.
+_ROUNDS, _SAME = 3, 0.5
 
 
 class _Search:
-    """The misfit of one section against the angle, tried where it matters."""
+    """The misfit of one section against the angle, tried where it matters.
+
+    First coarsely with blunted data, whose misfit has no sharp walls to get stuck at;
+    then with the data as they are stated, at the smoothness of the best angle.
+    """
 
     def __init__(self, problems):
         self.problems = problems
@@ -53,25 +61,40 @@ class _Search:
         self.widest = int(np.argmax(heaves))
         hang = problems[self.widest].separation.hanging_wall.x
         self.alone = self.system.of_one(self.widest, hang)
-        self.rough = {}
         self.log_weight = None
-        self.fits = {}
+        self.starts, self.fits = {}, {}
 
     def run(self):
         """Give angles, misfit and degrees of freedom."""
         self._scan()
-        if not self.rough:
+        if not self.starts:
             return ANGLES, np.full(len(ANGLES), np.inf), 0.0
-        least = min(self.rough.values(), key=lambda f: f.deviance)
-        self.log_weight = least.log_weight
-        tried = self._outwards(least.angle)
-        angles, values = refined(self._value, tried)
-        if not np.isfinite(values).any():
-            return angles, values, 0.0
-        best = self.fits[angles[int(np.argmin(values))]][0]
+        best = min(self.starts.values(), key=lambda f: f.deviance).angle
+        for _ in range(_ROUNDS):
+            before, self.log_weight = self.log_weight, self._smoothness(best)
+            if before is not None and abs(self.log_weight - before) < _SAME:
+                self.log_weight = before
+                break
+            self.fits = {}
+            angles, values = refined(self._value, self._outwards(best))
+            if not np.isfinite(values).any():
+                return angles, values, 0.0
+            best = float(angles[int(np.argmin(values))])
+        fit = self.fits[best][0]
         # differences tell the angle; the level is that of the data's misfit
-        values = (values - values.min()) * self._reliance(angles, values, best)
-        return angles, values + best.chi2, best.freedom
+        values = (values - values.min()) * self._reliance(angles, values, fit)
+        return angles, values + fit.chi2, fit.freedom
+
+    def _smoothness(self, angle):
+        """Log weight of the curvature by the data as stated, at an angle."""
+        near = self._near(angle)[0]
+        fit = self.system.solve(angle, near)
+        return near.log_weight if fit is None else fit.log_weight
+
+    def _near(self, angle):
+        """Give the fits at the nearest angle there is one of."""
+        pool = self.fits or {a: (f, None) for a, f in self.starts.items()}
+        return pool[min(pool, key=lambda a: abs(a - angle))]
 
     def _reliance(self, angles, values, best):
         """Share of the curve that holds: the fault it rests on is noisy itself.
@@ -86,15 +109,16 @@ class _Search:
 
     def _scan(self):
         """Try coarse angles from vertical shear outwards, smoothness free."""
+        blunt = JointSystem(self.problems, _BLUNT)
         for side in (ANGLES[ANGLES >= 0], ANGLES[ANGLES < 0][::-1]):
-            near = self.rough.get(0.0)
+            near = self.starts.get(0.0)
             for angle in side.tolist():
                 possible = _possible(self.problems, angle)
-                fit = self.system.solve(angle, near) if possible else None
+                fit = blunt.solve(angle, near) if possible else None
                 if fit is None:
                     continue
-                self.rough[angle] = near = fit
-                least = min(f.deviance for f in self.rough.values())
+                self.starts[angle] = near = fit
+                least = min(f.deviance for f in self.starts.values())
                 if fit.deviance > least + _STEEP:
                     break
 
@@ -113,8 +137,7 @@ class _Search:
         """Misfit of all data less that of one horizon alone, at one angle."""
         if not _possible(self.problems, angle):
             return np.inf
-        pool = self.fits or {a: (f, None) for a, f in self.rough.items()}
-        near = pool[min(pool, key=lambda a: abs(a - angle))]
+        near = self._near(angle)
         joint = self.system.solve(angle, near[0], self.log_weight)
         if joint is None:
             return np.inf

@@ -19,12 +19,16 @@ __all__ = ["JointFit", "JointSystem"]
 
 #: Knots in the smallest heave, and the most pieces altogether.
 _KNOTS, _MOST = 3.0, 120
-#: Least standard deviation of any datum, as a share of the throw: what a curve between
-#: knots may miss a bend by.
+#: Least standard deviation of any datum, as a share of the throw.
 _LEAST = 1e-3
+#: Largest log weight of the curvature against that of the data: beyond, a fault that is
+#: straight already gets no straighter, only the numbers worse.
+_STIFF = 12.0
 #: Gauss-Newton steps at most. They end where the misfit is going to lessen by no more
 #: than this, or this share of it.
 _STEPS, _SMALL, _SHARE = 20, 0.01, 2e-5
+#: Decrease of the misfit that rounding may feign with a stiff fault.
+_ROUNDING = 0.1
 
 
 @dataclass(frozen=True, eq=False)
@@ -120,11 +124,12 @@ class _Linear:
             found = self.solved(log_weight)
             return -np.inf if found is None else -found[0]
 
-        if near is not None:
-            return golden_maximum(value, near - 1.2, near + 1.2, 5)
         n = len(self.coefficients)
         scale = np.log(np.trace(self.normal[:n, :n]) / np.trace(self.bent))
-        grid = scale + np.arange(-12.0, 22.1, 2.0)
+        if near is not None:
+            near = min(near, scale + _STIFF)
+            return golden_maximum(value, near - 1.2, near + 1.2, 5)
+        grid = scale + np.arange(-12.0, _STIFF + 0.1, 2.0)
         best = int(np.argmax([value(w) for w in grid]))
         low, high = grid[max(best - 1, 0)], grid[min(best + 1, len(grid) - 1)]
         return golden_maximum(value, low, high, 8)
@@ -143,6 +148,9 @@ class JointSystem:
     ----------
     problems : sequence of Problem
         One for each horizon, on one known fault. Their shear angles do not count.
+    least : float
+        Least standard deviation of any datum, as a share of the throw: no less than
+        what a curve between knots may miss a bend by.
 
     Notes
     -----
@@ -153,9 +161,9 @@ class JointSystem:
     linearised at its solution (Laplace).
     """
 
-    def __init__(self, problems):
+    def __init__(self, problems, least=_LEAST):
         throw = max(p.separation.throw for p in problems)
-        self._least = _LEAST * throw
+        self._least = least * throw
         self.horizons = [HorizonData(p, self._least) for p in problems]
         upright = [replace(p, model=ConstantHeave(0.0)) for p in problems]
         widest = max(upright, key=lambda p: p.separation.heave)
@@ -227,12 +235,15 @@ class JointSystem:
             if found is None:
                 return None
             deviance, misfit, change, decrease = found
-            if decrease < _SMALL + _SHARE * linear.square:
-                found = deviance, misfit, linear.square, rows, log_weight
-                return JointFit(angle, *found, state, linear)
-            now = self._moved(state, tan, change, decrease, log_weight)
-            if now is None:
-                return None
+            if decrease > _SMALL + _SHARE * linear.square:
+                now = self._moved(state, tan, change, decrease, log_weight)
+                if now is not None:
+                    continue
+                # a small decrease that cannot be had is rounding
+                if decrease > _ROUNDING:
+                    return None
+            found = deviance, misfit, linear.square, rows, log_weight
+            return JointFit(angle, *found, state, linear)
         return None
 
     def slope_noise(self, fit):
